@@ -1,0 +1,135 @@
+//! Why the base was stopped, with the values that decided it.
+
+use serde::{Deserialize, Serialize};
+
+/// Why the phase is Tripped.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub enum Cause {
+    /// Somebody or something asked for a stop.
+    StopAsked(StopBy),
+    /// The pad was unplugged or its device does not answer.
+    PadGone,
+    /// No valid feedback from a link.
+    FeedbackQuiet {
+        /// The link.
+        link: u8,
+        /// Age of the newest.
+        age_ms: u32,
+    },
+    /// What is sent is not acknowledged in time.
+    NotHeard {
+        /// The link.
+        link: u8,
+        /// Age of the last acknowledged frame.
+        age_ms: u32,
+    },
+    /// A port is gone or cannot be written.
+    WriteFailed {
+        /// The link.
+        link: u8,
+        /// The port is gone, not merely blocked.
+        gone: bool,
+    },
+    /// A tick came too late.
+    LateTick {
+        /// By how much.
+        late_ms: u32,
+    },
+    /// The sentinel saw no tick in time.
+    NoTick,
+    /// A driver reports something that must stop the base.
+    DriverSays {
+        /// The link.
+        link: u8,
+        /// What.
+        what: DriverTrouble,
+    },
+    /// A wheel does not follow its command.
+    NotFollowing {
+        /// The wheel.
+        wheel: u8,
+        /// Command that it should follow, rad/s.
+        commanded_rad_s: f32,
+        /// What was measured, rad/s.
+        measured_rad_s: f32,
+    },
+    /// A wheel does not slow down in a stop.
+    NotSlowing {
+        /// The wheel.
+        wheel: u8,
+        /// What the ramp should have made of it, rad/s.
+        commanded_rad_s: f32,
+        /// What was measured, rad/s.
+        measured_rad_s: f32,
+    },
+    /// A wheel turns under torque although told to stand.
+    Runaway {
+        /// The wheel.
+        wheel: u8,
+        /// What was measured, rad/s.
+        measured_rad_s: f32,
+    },
+    /// The wheels skid against each other.
+    Skid {
+        /// The wheel, where five or more can tell; `None` with four.
+        wheel: Option<u8>,
+        /// The residual, rad/s.
+        residual_rad_s: f32,
+    },
+    /// A stop by the host did not reach standstill in time.
+    StopOverdue {
+        /// How long it had.
+        allowed_ms: u32,
+    },
+    /// A second signal while stopping.
+    SecondSignal,
+    /// A thread of the program panicked.
+    Panic,
+    /// A driver was latched when the program started or a port was opened.
+    FoundLatched {
+        /// The link.
+        link: u8,
+        /// Its status bits.
+        status: u16,
+    },
+    /// A reset was tried and a link did not unlatch in time.
+    NotCleared {
+        /// The link.
+        link: u8,
+    },
+}
+
+/// Who asked for the stop.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum StopBy {
+    /// The stop button.
+    PadButton,
+    /// The hold control squeezed through.
+    Squeeze,
+    /// The console.
+    Console,
+    /// A driver's stop input.
+    DriverInput {
+        /// The link.
+        link: u8,
+    },
+}
+
+/// What a driver reports.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum DriverTrouble {
+    /// Fault bits, see [`crate::wire::status`].
+    Fault {
+        /// The bits.
+        status: u16,
+    },
+    /// Latched although we sent no stop.
+    LatchNotOurs {
+        /// The bits.
+        status: u16,
+    },
+    /// It started anew: another boot number, or its clock fell.
+    Restarted,
+    /// Its Identity is not the one that it had.
+    IdentityChanged,
+}
