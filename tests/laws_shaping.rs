@@ -46,35 +46,40 @@ fn machine() -> impl Strategy<Value = Machine> {
         (0.2..1.4_f64, 0.2..1.0_f64, 0.2..1.0_f64),
         (10.0..40.0_f64, 1.05..4.0_f64),
     )
-        .prop_filter_map("not a machine that check accepts", |(layout, limits, saturation, share, wheels)| {
-            let (speed_up_m_s2, slow_down_m_s2, stop_m_s2, turn_rad_s2, grip_m_s2, smoothing_s) = limits;
-            let limits = Limits {
-                speed_up_m_s2,
-                slow_down_m_s2,
-                stop_m_s2,
-                turn_rad_s2,
-                grip_m_s2,
-                smoothing_s,
-                saturation,
-            };
-            let gain = |row: &[f64; 3]| row[1].hypot(row[2]);
-            let max_rad_s: PerWheel<f64> = layout.rows().iter().map(|_| wheels.0).collect();
-            let fastest = layout.rows().iter().map(|row| wheels.0 / gain(row)).fold(f64::INFINITY, f64::min);
-            let turn = layout.rows().iter().map(|row| wheels.0 / row[0].abs()).fold(f64::INFINITY, f64::min);
-            let fast = Pace { travel_m_s: fastest * share.0, turn_rad_s: (turn * share.1).min(6.0) };
-            let slow = Pace {
-                travel_m_s: fast.travel_m_s * share.2,
-                turn_rad_s: fast.turn_rad_s * (1.2 - share.2).min(1.0),
-            };
-            let p = fast.travel_m_s * fast.turn_rad_s / grip_m_s2;
-            let grip = grip_m_s2.min(fast.travel_m_s * fast.turn_rad_s);
-            let max_rad_s2: PerWheel<f64> =
-                layout.rows().iter().map(|row| (grip * gain(row) * wheels.1).max(20.0)).collect();
-            let response = Response { deadband: 0.1, curve: 1.5 };
-            let settings =
-                ShaperSettings::new(layout, (max_rad_s, max_rad_s2), limits, response, PERIOD_S, 0.0);
-            (p <= 4.0).then_some(Machine { settings, paces: [slow, fast] })
-        })
+        .prop_filter_map(
+            "not a machine that check accepts",
+            |(layout, limits, saturation, share, wheels)| {
+                let (speed_up_m_s2, slow_down_m_s2, stop_m_s2, turn_rad_s2, grip_m_s2, smoothing_s) = limits;
+                let limits = Limits {
+                    speed_up_m_s2,
+                    slow_down_m_s2,
+                    stop_m_s2,
+                    turn_rad_s2,
+                    grip_m_s2,
+                    smoothing_s,
+                    saturation,
+                };
+                let gain = |row: &[f64; 3]| row[1].hypot(row[2]);
+                let max_rad_s: PerWheel<f64> = layout.rows().iter().map(|_| wheels.0).collect();
+                let fastest =
+                    layout.rows().iter().map(|row| wheels.0 / gain(row)).fold(f64::INFINITY, f64::min);
+                let turn =
+                    layout.rows().iter().map(|row| wheels.0 / row[0].abs()).fold(f64::INFINITY, f64::min);
+                let fast = Pace { travel_m_s: fastest * share.0, turn_rad_s: (turn * share.1).min(6.0) };
+                let slow = Pace {
+                    travel_m_s: fast.travel_m_s * share.2,
+                    turn_rad_s: fast.turn_rad_s * (1.2 - share.2).min(1.0),
+                };
+                let p = fast.travel_m_s * fast.turn_rad_s / grip_m_s2;
+                let grip = grip_m_s2.min(fast.travel_m_s * fast.turn_rad_s);
+                let max_rad_s2: PerWheel<f64> =
+                    layout.rows().iter().map(|row| (grip * gain(row) * wheels.1).max(20.0)).collect();
+                let response = Response { deadband: 0.1, curve: 1.5 };
+                let settings =
+                    ShaperSettings::new(layout, (max_rad_s, max_rad_s2), limits, response, PERIOD_S, 0.0);
+                (p <= 4.0).then_some(Machine { settings, paces: [slow, fast] })
+            },
+        )
 }
 
 #[derive(Clone, Debug)]
@@ -129,7 +134,8 @@ fn play(machine: &Machine, history: &[(Act, usize)], mut look: impl FnMut(&Tick,
             let goal = if stop { Goal::Stop } else { Goal::Follow { sticks, pace } };
             let shaped = shaper.step(goal, at.heading_rad);
             assert!(!shaped.last_check_fired, "the last check fired at {shaped:?}");
-            let now = Tick { stick: shaped.in_stick_frame, base: shaped.in_base_frame, frame: shaper.frame() };
+            let now =
+                Tick { stick: shaped.in_stick_frame, base: shaped.in_base_frame, frame: shaper.frame() };
             look(&before, &now, now.frame == before.frame && !(shifted && now.frame == Frame::Room));
             before = now;
             shifted = false;

@@ -42,9 +42,11 @@ impl Region {
                 let speed = h_turn * twist.turn_rad_s + h_x * twist.x_m_s + h_y * twist.y_m_s;
                 greatest.max(speed.abs() / max)
             }),
-            Frame::Room => rows.zip(&settings.travel_gain).fold(floor, |greatest, (([h_turn, ..], max), gain)| {
-                greatest.max((h_turn.abs() * turn + gain * travel * self.arc_by_chord) / max)
-            }),
+            Frame::Room => {
+                rows.zip(&settings.travel_gain).fold(floor, |greatest, (([h_turn, ..], max), gain)| {
+                    greatest.max((h_turn.abs() * turn + gain * travel * self.arc_by_chord) / max)
+                })
+            }
         }
     }
 
@@ -65,7 +67,9 @@ impl Region {
         let asked = if floor > 1.0 { asked.scaled(1.0 / floor) } else { asked };
         let kept = match settings.limits.saturation {
             Saturation::Together => asked,
-            Saturation::KeepTurn => self.kept(Twist::new(asked.turn_rad_s, 0.0, 0.0), Part::Travel, asked, settings),
+            Saturation::KeepTurn => {
+                self.kept(Twist::new(asked.turn_rad_s, 0.0, 0.0), Part::Travel, asked, settings)
+            }
             Saturation::KeepTravel => {
                 self.kept(Twist::new(0.0, asked.x_m_s, asked.y_m_s), Part::Turn, asked, settings)
             }
