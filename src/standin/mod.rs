@@ -9,3 +9,7 @@
 //! - [`hands`]: the script of a pair of hands, as [`PadInput`](crate::core::io::PadInput) over time
 
 pub mod hands;
+
+mod chance;
+mod noise;
+mod wheels;

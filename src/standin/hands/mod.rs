@@ -83,6 +83,9 @@ impl Hands {
             }
             self.down = down;
             hold_least = hold_least.min(self.hold());
+            if line.action == Action::Unplug {
+                break; // said by at least one call, however soon the plug follows
+            }
         }
         if !self.plugged {
             return PadInput { last_sign: self.last_sign, streams: true, ..PadInput::default() };
@@ -169,3 +172,6 @@ impl Values {
         self.buttons.get(button as usize).copied().unwrap_or(0.0)
     }
 }
+
+#[cfg(test)]
+mod tests;
