@@ -119,7 +119,14 @@ impl Sim {
 
     /// Lets time pass until `to`. The first call only sets the clock; a `to` in the past changes nothing.
     pub fn step(&mut self, to: Mono) {
-        let mut now = *self.now.get_or_insert(to);
+        let mut now = match self.now {
+            Some(now) => now,
+            None => {
+                self.boards.iter_mut().for_each(|board| board.begin(to));
+                self.measure();
+                to
+            }
+        };
         while now < to {
             let stretch_ns = to.since_ns(now).min(STRETCH_NS);
             now = now.plus_ns(stretch_ns);

@@ -2,3 +2,4 @@
 //! it; the pure parts never do.
 
 pub mod clock;
+pub mod opens;

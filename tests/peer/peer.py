@@ -151,12 +151,12 @@ class Drivers:
         self.yaw = 0
         self.yaw_valid = bool(identity["flags"] & 2)
         self.supply_mv = 24_000
-        self.token = 0
         self._start(0)
 
     def _start(self, now_us):
         n = self.identity["channels"]
         self.started_us = now_us
+        self.token = next(self.tokens) & 0xFFFF
         self.mode = "park"
         self.parked_once = False
         self.latched = False
@@ -185,7 +185,8 @@ class Drivers:
         self.note({"event": "restarted", "boot": self.boot})
 
     def latch(self, now_us, why, ramp_ms=None):
-        """Latches, or shortens the ramp of a standing latch; draws a new token."""
+        """Latches with the ramp given, else with that of the last Drive; a latch that stands may be shortened. Draws a
+        new token."""
         ramp_ms = min(self.ramp_ms if ramp_ms is None else ramp_ms, self.identity["ramp_max_ms"])
         begin = self.commanded(now_us)
         if not self.latched:
@@ -226,21 +227,25 @@ class Drivers:
         return sum(1 << BIT[name] for name in bits)
 
     def set_stop_input(self, is_open, now_us):
-        if is_open and not self.stop_input_open:
-            self.stop_input_open = True
+        self.expire(now_us)
+        if is_open and not self.stop_input_open and not self.latched:
             self.latch(now_us, "stop input")
         self.stop_input_open = is_open
 
     def step(self, now_us):
         """Whatever time alone brings about."""
+        self.expire(now_us)
+        if now_us >= self.feedback_due_us:
+            self.say_feedback(now_us)
+
+    def expire(self, now_us):
+        """Validity and ramps that have run out."""
         if not self.latched and self.mode != "park" and self.valid_until_us is not None \
                 and now_us >= self.valid_until_us:
             self.went_silent = True
-            self.latch(now_us, "silence")
+            self.latch(self.valid_until_us, "silence")
         if self.ramp is not None and now_us >= self.ramp[1] + self.ramp[2]:
             self._torque_off()
-        if now_us >= self.feedback_due_us:
-            self.say_feedback(now_us)
 
     def hear(self, data, now_us):
         for byte in data:
@@ -284,7 +289,8 @@ class Drivers:
         if (mode == "hold" and not self.parked_once) or (mode == "run" and self.mode == "park"):
             self.out_of_order = True
             return False
-        self.out_of_order = False
+        if mode == "park":
+            self.out_of_order = False       # it stands until the host begins from the beginning
         self.parked_once = True
         self.mode = mode
         self.torque = mode != "park"
@@ -452,7 +458,8 @@ class Peer:
             self.origin, self.clock_shift_us = time.monotonic(), 0
             d.restart(0)
         elif word == "latch":
-            d.latch(now_us, "asked at standard input")
+            if not d.latched:
+                d.latch(now_us, "asked at standard input")
         elif word == "token":
             d.token = next(d.tokens)
         elif word == "stop-input":
@@ -579,7 +586,7 @@ def replay(options):
             drivers.restart(now_us)
         if "stop_input" in step:
             drivers.set_stop_input(step["stop_input"], now_us)
-        if step.get("latch"):
+        if step.get("latch") and not drivers.latched:
             drivers.latch(now_us, "asked")
         drivers.step(now_us)
         if "hex" in step:
