@@ -209,10 +209,14 @@ impl Board {
                 }
             }
             LinkFault::Lossy(probability) => {
-                [&mut self.says, &mut self.hears].map(|way| way.set_lossy(probability));
+                for way in [&mut self.says, &mut self.hears] {
+                    way.set_lossy(probability);
+                }
             }
             LinkFault::Noisy(probability) => {
-                [&mut self.says, &mut self.hears].map(|way| way.set_noisy(probability));
+                for way in [&mut self.says, &mut self.hears] {
+                    way.set_noisy(probability);
+                }
             }
             LinkFault::Slow { late_ms } => self.says.set_late(s_to_ns(late_ms * 1e-3)),
             LinkFault::Restart => self.restart(now),

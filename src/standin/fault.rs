@@ -317,3 +317,77 @@ fn which<'a>(
         }),
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::standin::testing::plan;
+
+    fn fault(line: &str) -> Fault {
+        match parse(line, &plan()) {
+            Ok(Asked::Fault(fault)) => fault,
+            other => panic!("{line}: {other:?}"),
+        }
+    }
+
+    #[test]
+    fn a_name_picks_one_and_no_name_means_all() {
+        assert_eq!(fault("mute"), Fault::Link(Which::All, LinkFault::Mute));
+        assert_eq!(fault("  mute   rear "), Fault::Link(Which::One(1), LinkFault::Mute));
+        assert_eq!(fault("stuck rear left"), Fault::Wheel(Which::One(2), WheelFault::Stuck));
+        assert_eq!(
+            fault("runaway -0.5 front right"),
+            Fault::Wheel(Which::One(1), WheelFault::Runaway { share: -0.5 })
+        );
+        assert_eq!(fault("lossy 0.25 front"), Fault::Link(Which::One(0), LinkFault::Lossy(0.25)));
+        assert_eq!(
+            fault("stop-input open rear"),
+            Fault::Link(Which::One(1), LinkFault::StopInput { open: true })
+        );
+        assert_eq!(fault("clear"), Fault::Clear);
+    }
+
+    /// Every line of the help begins with a word that the parser knows.
+    #[test]
+    fn the_help_lists_what_there_is() {
+        let mut words = 0;
+        for line in HELP.lines().filter(|line| !line.starts_with("Without")) {
+            let (word, rest) = split(line);
+            let value = match rest.split_whitespace().next() {
+                Some("P" | "SHARE" | "FACTOR") => "0.5",
+                Some("MS" | "VOLTS") => "12",
+                Some("open|close") => "close",
+                Some("on|off") => "off",
+                _ => "",
+            };
+            let asked = parse(&format!("{word} {value}"), &plan());
+            assert!(asked.is_ok_and(|asked| asked != Asked::Nothing), "{line}");
+            words += 1;
+        }
+        assert_eq!(words, 22);
+        for word in ["over-temperature", "under-voltage", "encoder"] {
+            assert!(HELP.contains(word) && parse(word, &plan()).is_ok());
+        }
+    }
+
+    #[test]
+    fn a_bad_line_is_answered_in_one_line() {
+        for (line, told) in [
+            ("frobnicate", "there is no `frobnicate`; `help` lists what there is"),
+            ("lossy", "`lossy` needs a probability from 0 to 1, not ``"),
+            ("lossy 2", "`lossy` needs a probability from 0 to 1, not `2`"),
+            ("lossy nan front", "`lossy` needs a probability from 0 to 1, not `nan`"),
+            ("stop-input ajar", "`stop-input` needs `open` or `close`, not `ajar`"),
+            ("mute back", "there is no link `back`; there are: front, rear"),
+            (
+                "stuck front",
+                "there is no wheel `front`; there are: front left, front right, rear left, rear right",
+            ),
+            ("clear all", "`clear` stands alone; take out `all`"),
+            ("slow 70000", "`slow` needs milliseconds from 0 to 60000, not `70000`"),
+        ] {
+            assert_eq!(parse(line, &plan()).map_err(|why| why.to_string()), Err(told.to_owned()));
+        }
+        assert_eq!(parse("  ", &plan()), Ok(Asked::Nothing));
+    }
+}

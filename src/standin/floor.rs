@@ -38,8 +38,13 @@ impl Floor {
         self.gripping = if self.grips.iter().all(|grips| *grips) {
             None
         } else {
-            let rest: Vec<Wheel> =
-                self.wheels.iter().zip(&self.grips).filter(|(_, grips)| **grips).map(|(wheel, _)| *wheel).collect();
+            let rest: Vec<Wheel> = self
+                .wheels
+                .iter()
+                .zip(&self.grips)
+                .filter(|(_, grips)| **grips)
+                .map(|(wheel, _)| *wheel)
+                .collect();
             Layout::new(&rest).ok()
         };
     }

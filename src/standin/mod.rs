@@ -24,4 +24,6 @@ mod chance;
 mod floor;
 mod noise;
 mod port;
+#[cfg(test)]
+mod testing;
 mod wheels;

@@ -44,8 +44,7 @@ impl Port {
     }
 
     pub(super) fn given(path: &Path, baud: u32) -> Result<Self, ServeError> {
-        let file = open(path, baud)
-            .map_err(|source| ServeError::Port { path: path.to_owned(), source })?;
+        let file = open(path, baud).map_err(|source| ServeError::Port { path: path.to_owned(), source })?;
         Ok(Self::Given { file: Some(file), path: path.to_owned(), baud, retry: Mono::default() })
     }
 
@@ -124,6 +123,9 @@ impl Port {
     }
 }
 
+fn open(_: &Path, _: u32) -> std::io::Result<File> {
+    todo!()
+}
 fn drain(file: &mut File, heard: &mut Vec<u8>) -> std::io::Result<()> {
     let mut buffer = [0_u8; 4096];
     loop {

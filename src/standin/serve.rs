@@ -189,11 +189,12 @@ impl Drop for Served {
 }
 
 fn open_ports(plan: &Plan, given: &[(usize, PathBuf)]) -> Result<Vec<Port>, ServeError> {
-    let port = |(index, link): (usize, &crate::config::LinkPlan)| {
-        match given.iter().find(|(link, _)| *link == index) {
-            Some((_, path)) => Port::given(path, link.baud),
-            None => Port::pty(),
-        }
+    let port = |(index, link): (usize, &crate::config::LinkPlan)| match given
+        .iter()
+        .find(|(link, _)| *link == index)
+    {
+        Some((_, path)) => Port::given(path, link.baud),
+        None => Port::pty(),
     };
     plan.links.iter().enumerate().map(port).collect()
 }

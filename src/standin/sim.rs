@@ -171,16 +171,23 @@ impl Sim {
         match fault {
             Fault::Link(which, fault) => {
                 let now = self.now.unwrap_or_default();
-                for (index, board) in self.boards.iter_mut().enumerate().filter(|(index, _)| which.has(*index)) {
+                for (index, board) in
+                    self.boards.iter_mut().enumerate().filter(|(index, _)| which.has(*index))
+                {
                     board.fault(fault, now);
                     if fault == LinkFault::Restart {
-                        self.wheels.iter_mut().filter(|w| w.mount.link == index).for_each(|w| w.counted_rad = 0.0);
+                        self.wheels
+                            .iter_mut()
+                            .filter(|w| w.mount.link == index)
+                            .for_each(|w| w.counted_rad = 0.0);
                     }
                 }
                 self.measure();
             }
             Fault::Wheel(which, fault) => {
-                for (index, wheel) in self.wheels.iter_mut().enumerate().filter(|(index, _)| which.has(*index)) {
+                for (index, wheel) in
+                    self.wheels.iter_mut().enumerate().filter(|(index, _)| which.has(*index))
+                {
                     wheel.fault = fault;
                     self.floor.set_grip(index, !matches!(fault, WheelFault::Skid { .. }));
                 }
@@ -275,7 +282,9 @@ impl Sim {
         let mut targets: PerWheel<f64> = self
             .wheels
             .iter()
-            .map(|wheel| self.boards.get(wheel.mount.link).map_or(0.0, |board| wheel.mount.target_rad_s(board)))
+            .map(|wheel| {
+                self.boards.get(wheel.mount.link).map_or(0.0, |board| wheel.mount.target_rad_s(board))
+            })
             .collect();
         for (link, board) in self.boards.iter_mut().enumerate() {
             let able = RESERVE * board.supply_v() / self.settings.supply_v;
@@ -307,7 +316,11 @@ impl Sim {
         for wheel in &self.wheels {
             if let Some(board) = self.boards.get_mut(wheel.mount.link) {
                 let dead = wheel.fault == WheelFault::EncoderDead;
-                board.read_encoder(&wheel.mount, wheel.counted_rad, if dead { 0.0 } else { wheel.speed_rad_s });
+                board.read_encoder(
+                    &wheel.mount,
+                    wheel.counted_rad,
+                    if dead { 0.0 } else { wheel.speed_rad_s },
+                );
             }
         }
     }
@@ -326,3 +339,6 @@ impl SimWheel {
         Chase { speed_rad_s: self.speed_rad_s, target_rad_s, max_rad_s2: PUSH_RESERVE * self.max_rad_s2 }
     }
 }
+
+#[cfg(test)]
+mod tests;
