@@ -64,7 +64,9 @@ pub fn analyse(wheels: &[Wheel]) -> Analysis {
     if let Some(v_t) = &svd.v_t {
         for &it in order.iter().skip(analysis.rank) {
             let row = v_t.row(it);
-            analysis.impossible.push(impossible([row[0] / characteristic_m, row[1], row[2]], characteristic_m));
+            analysis
+                .impossible
+                .push(impossible([row[0] / characteristic_m, row[1], row[2]], characteristic_m));
         }
     }
     if analysis.rank == 3 {
@@ -99,7 +101,8 @@ fn impossible([turn, x, y]: [f64; 3], characteristic_m: f64) -> String {
 /// Completes the basis of the range to one of the whole space; what is added spans the left null space.
 fn skid_basis(layout: &Layout) -> Vec<Vec<f64>> {
     let m = layout.rows().len();
-    let mut basis: Vec<Vec<f64>> = (0..3).map(|j| layout.range().iter().map(|row| row[j]).collect()).collect();
+    let mut basis: Vec<Vec<f64>> =
+        (0..3).map(|j| layout.range().iter().map(|row| row[j]).collect()).collect();
     while basis.len() < m {
         // The unit vector that the basis covers least, made orthogonal twice.
         let covered = |i: usize| basis.iter().map(|b| b[i] * b[i]).sum::<f64>();

@@ -155,7 +155,8 @@ fn add_scaled(sum: &mut [f64; 3], part: &[f64; 3], by: f64) {
 /// H with its turn column divided by `characteristic_m`, as Q R with orthonormal columns of Q (a row a wheel) and R
 /// upper triangular: Gram-Schmidt done twice ("twice is enough", Parlett, The Symmetric Eigenvalue Problem, 6.9).
 fn factored(rows: &PerWheel<[f64; 3]>, characteristic_m: f64) -> (PerWheel<[f64; 3]>, [[f64; 3]; 3]) {
-    let mut q: PerWheel<[f64; 3]> = rows.iter().map(|[turn, x, y]| [turn / characteristic_m, *x, *y]).collect();
+    let mut q: PerWheel<[f64; 3]> =
+        rows.iter().map(|[turn, x, y]| [turn / characteristic_m, *x, *y]).collect();
     let mut upper = [[0.0; 3]; 3];
     for column in 0..3 {
         for _twice in 0..2 {

@@ -12,7 +12,10 @@ pub fn exp(twist: Twist, dt_s: f64) -> Pose {
     let (x, y) = (twist.x_m_s * dt_s, twist.y_m_s * dt_s);
     let (along, across) = if angle.abs() < SMALL_RAD {
         let square = angle * angle;
-        (1.0 - square / 6.0 * (1.0 - square / 20.0), angle / 2.0 * (1.0 - square / 12.0 * (1.0 - square / 30.0)))
+        (
+            1.0 - square / 6.0 * (1.0 - square / 20.0),
+            angle / 2.0 * (1.0 - square / 12.0 * (1.0 - square / 30.0)),
+        )
     } else {
         // 1 - cos written so that it does not cancel.
         let half = libm::sin(angle / 2.0);

@@ -16,7 +16,8 @@ impl Reach {
     /// From the layout and the greatest speed of each wheel in rad/s.
     #[must_use]
     pub fn new(layout: &Layout, max_rad_s: &PerWheel<f64>) -> Self {
-        let wheels: Vec<_> = layout.rows().iter().zip(max_rad_s).map(|(row, &max)| ([row[1], row[2]], max)).collect();
+        let wheels: Vec<_> =
+            layout.rows().iter().zip(max_rad_s).map(|(row, &max)| ([row[1], row[2]], max)).collect();
         let turn_rad_s = layout
             .rows()
             .iter()

@@ -188,8 +188,8 @@ fn answer(line: &str, plan: &Plan, served: &Served) -> Result<String, fault::Fau
 fn in_words(news: &ServeNews, plan: &Plan) -> Result<String, String> {
     let name = |link: &usize| plan.links.get(*link).map_or("?", |link| link.name.as_str());
     match news {
-        ServeNews::Port { link, news: PortNews::Opened } => Ok(format!("{}: opened", name(link))),
-        ServeNews::Port { link, news: PortNews::Closed } => Ok(format!("{}: closed", name(link))),
+        ServeNews::Port { link, news: PortNews::Read } => Ok(format!("{}: somebody has come", name(link))),
+        ServeNews::Port { link, news: PortNews::Unread } => Ok(format!("{}: nobody reads any more", name(link))),
         ServeNews::Port { link, news: PortNews::Back } => Ok(format!("{}: the port is back", name(link))),
         ServeNews::Port { link, news: PortNews::Lost(why) } => {
             Err(format!("link `{}`: the port is gone ({why}); it is tried again twice a second", name(link)))

@@ -6,20 +6,22 @@ use std::os::fd::{AsFd, BorrowedFd, OwnedFd};
 use std::path::{Path, PathBuf};
 
 use super::serve::ServeError;
-use crate::sys::opens::{Opens, discard_unread};
+use crate::sys::serial::{has_unread, make_ready, open_nonblocking};
 use crate::sys::tty;
 use crate::units::Mono;
 
 /// How long to wait before a lost port is tried again.
 const RETRY_NS: u64 = 500_000_000;
+/// What nobody has read for so long is thrown away, so that whoever comes next finds nothing older.
+const STALE_NS: u64 = 200_000_000;
 
 /// What changed at a port.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub enum PortNews {
-    /// Somebody opened the pseudo-terminal.
-    Opened,
-    /// Everybody closed it.
-    Closed,
+    /// Somebody has come to the pseudo-terminal.
+    Read,
+    /// Nobody reads it any more: closed, or stuck.
+    Unread,
     /// The port is gone; it is tried again twice a second.
     Lost(String),
     /// It is back.
@@ -29,103 +31,139 @@ pub enum PortNews {
 /// One port.
 #[derive(Debug)]
 pub(super) enum Port {
-    /// A pseudo-terminal: its drivers' end, and one descriptor of the other end that keeps it alive and raw when the
-    /// host closes its own. Nothing is ever read from that.
-    Pty { master: File, keeper: OwnedFd, path: PathBuf, opens: Option<Opens>, hosts: u32 },
+    /// A pseudo-terminal of our own.
+    Pty(OwnPty),
     /// A port that was there before.
-    Given { file: Option<File>, path: PathBuf, baud: u32, retry: Mono },
+    Given(GivenPort),
 }
 
 impl Port {
     pub(super) fn pty() -> Result<Self, ServeError> {
         let tty::Pty { master, slave, path } = tty::open_pty().map_err(ServeError::Pty)?;
-        let opens = Opens::of(&path).ok();
-        Ok(Self::Pty { master: File::from(master), keeper: slave, path, opens, hosts: 0 })
+        let (read_out, waits, is_read) = (Mono::default(), false, false);
+        Ok(Self::Pty(OwnPty { master: File::from(master), keeper: slave, path, read_out, waits, is_read }))
     }
 
     pub(super) fn given(path: &Path, baud: u32) -> Result<Self, ServeError> {
-        let file = open(path, baud).map_err(|source| ServeError::Port { path: path.to_owned(), source })?;
-        Ok(Self::Given { file: Some(file), path: path.to_owned(), baud, retry: Mono::default() })
+        let file = open_nonblocking(path, baud)
+            .map_err(|source| ServeError::Port { path: path.to_owned(), source })?;
+        Ok(Self::Given(GivenPort { file: Some(file), path: path.to_owned(), baud, retry: Mono::default() }))
     }
 
     pub(super) fn path(&self) -> &Path {
         match self {
-            Self::Pty { path, .. } | Self::Given { path, .. } => path,
+            Self::Pty(port) => &port.path,
+            Self::Given(port) => &port.path,
         }
     }
 
     /// What to wait on.
-    pub(super) fn descriptors(&self) -> impl Iterator<Item = BorrowedFd<'_>> {
-        let (file, opens) = match self {
-            Self::Pty { master, opens, .. } => (Some(master), opens.as_ref()),
-            Self::Given { file, .. } => (file.as_ref(), None),
-        };
-        file.map(AsFd::as_fd).into_iter().chain(opens.map(AsFd::as_fd))
+    pub(super) fn descriptor(&self) -> Option<BorrowedFd<'_>> {
+        match self {
+            Self::Pty(port) => Some(port.master.as_fd()),
+            Self::Given(port) => port.file.as_ref().map(AsFd::as_fd),
+        }
     }
 
     /// Appends what has come in; says what changed.
     pub(super) fn read(&mut self, now: Mono, heard: &mut Vec<u8>) -> Option<PortNews> {
         match self {
-            Self::Pty { master, keeper, opens, hosts, .. } => {
-                let news = opens.as_mut().and_then(|opens| {
-                    let (count, closed) = opens.look();
-                    let before = std::mem::replace(hosts, count);
-                    if closed && count == 0 {
-                        // Whoever comes next is to find fresh feedback, as on a line, not what was left unread.
-                        discard_unread(keeper.as_fd());
-                        return Some(PortNews::Closed);
-                    }
-                    (before == 0 && count > 0).then_some(PortNews::Opened)
-                });
-                // A pseudo-terminal of our own does not fail while we keep both ends.
-                let _ = drain(master, heard);
-                news
-            }
-            Self::Given { file: Some(open_file), .. } => match drain(open_file, heard) {
-                Ok(()) => None,
-                Err(why) => self.lose(now, &why),
-            },
-            Self::Given { file, path, baud, retry } => {
-                if now < *retry {
-                    return None;
-                }
-                *retry = now.plus_ns(RETRY_NS);
-                *file = open(path, *baud).ok();
-                file.is_some().then_some(PortNews::Back)
-            }
+            Self::Pty(port) => port.read(now, heard),
+            Self::Given(port) => port.read(now, heard),
         }
     }
 
     /// Writes without waiting: what does not fit is lost, as on a line that nobody listens to.
     pub(super) fn write(&mut self, bytes: &[u8], now: Mono) -> Option<PortNews> {
         match self {
-            Self::Pty { master, opens, hosts, .. } => {
-                if opens.is_none() || *hosts > 0 {
-                    let _ = master.write(bytes);
-                }
+            Self::Pty(port) => {
+                let _ = port.master.write(bytes);
                 None
             }
-            Self::Given { file: Some(open_file), .. } => match open_file.write(bytes) {
-                Ok(_) => None,
-                Err(why) if patient(why.kind()) => None,
-                Err(why) => self.lose(now, &why),
-            },
-            Self::Given { file: None, .. } => None,
+            Self::Given(port) => port.write(bytes, now),
         }
-    }
-
-    fn lose(&mut self, now: Mono, why: &std::io::Error) -> Option<PortNews> {
-        if let Self::Given { file, retry, .. } = self {
-            *file = None;
-            *retry = now.plus_ns(RETRY_NS);
-        }
-        Some(PortNews::Lost(why.to_string()))
     }
 }
 
-fn open(_: &Path, _: u32) -> std::io::Result<File> {
-    todo!()
+/// A pseudo-terminal: its drivers' end, and one descriptor of the other end that keeps it alive and raw when the host
+/// closes its own. Nothing is ever read from that.
+#[derive(Debug)]
+pub(super) struct OwnPty {
+    master: File,
+    keeper: OwnedFd,
+    path: PathBuf,
+    /// When nothing was last seen to wait for the host.
+    read_out: Mono,
+    /// Something waits for it.
+    waits: bool,
+    /// Somebody is there.
+    is_read: bool,
 }
+
+impl OwnPty {
+    fn read(&mut self, now: Mono, heard: &mut Vec<u8>) -> Option<PortNews> {
+        let (before, heard_before) = (self.is_read, heard.len());
+        // A pseudo-terminal of which we keep both ends does not fail.
+        let _ = drain(&mut self.master, heard);
+        let waited = std::mem::replace(&mut self.waits, has_unread(self.keeper.as_fd()));
+        if heard.len() > heard_before || (waited && !self.waits) {
+            self.is_read = true;
+        }
+        if !self.waits {
+            self.read_out = now;
+        } else if now.since_ns(self.read_out) > STALE_NS {
+            make_ready(self.keeper.as_fd());
+            self.waits = false;
+            self.is_read = false;
+        }
+        match (before, self.is_read) {
+            (false, true) => Some(PortNews::Read),
+            (true, false) => Some(PortNews::Unread),
+            (false, false) | (true, true) => None,
+        }
+    }
+}
+
+/// A port that was there before, and that may go and come back.
+#[derive(Debug)]
+pub(super) struct GivenPort {
+    file: Option<File>,
+    path: PathBuf,
+    baud: u32,
+    retry: Mono,
+}
+
+impl GivenPort {
+    fn read(&mut self, now: Mono, heard: &mut Vec<u8>) -> Option<PortNews> {
+        if let Some(file) = &mut self.file {
+            return drain(file, heard).err().map(|why| self.lose(now, &why));
+        }
+        if now < self.retry {
+            return None;
+        }
+        self.retry = now.plus_ns(RETRY_NS);
+        self.file = open_nonblocking(&self.path, self.baud).ok();
+        self.file.is_some().then_some(PortNews::Back)
+    }
+
+    fn write(&mut self, bytes: &[u8], now: Mono) -> Option<PortNews> {
+        match self.file.as_mut()?.write(bytes) {
+            Ok(_) => None,
+            Err(why) if patient(why.kind()) => None,
+            Err(why) => Some(self.lose(now, &why)),
+        }
+    }
+
+    fn lose(&mut self, now: Mono, why: &std::io::Error) -> PortNews {
+        // Dropping a dead port can take half a minute where its queue will not drain.
+        if let Some(file) = self.file.take() {
+            let _ = std::thread::Builder::new().name("dropper".to_owned()).spawn(move || drop(file));
+        }
+        self.retry = now.plus_ns(RETRY_NS);
+        PortNews::Lost(why.to_string())
+    }
+}
+
 fn drain(file: &mut File, heard: &mut Vec<u8>) -> std::io::Result<()> {
     let mut buffer = [0_u8; 4096];
     loop {

@@ -8,6 +8,7 @@ shares no code with the program. Python 3, standard library only.
 
 Everything said and heard goes to --log (standard output by default) as one JSON object a line: frames with `dir`
 (`in`, `out`), `kind`, `sequence` and the fields of the body; events with `event`. `t` is CLOCK_MONOTONIC in seconds.
+Whoever starts it must read its standard output, or give a file: a full pipe would stop it.
 
 Misbehaviour is asked for at standard input, one command a line (answered by {"event": "did", ...} or
 {"event": "unknown", ...}):
