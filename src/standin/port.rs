@@ -6,8 +6,7 @@ use std::os::fd::{AsFd, BorrowedFd, OwnedFd};
 use std::path::{Path, PathBuf};
 
 use super::serve::ServeError;
-use crate::sys::serial::{has_unread, make_ready, open_nonblocking};
-use crate::sys::tty;
+use crate::sys::serial::{Pty, has_unread, make_ready, open_nonblocking, open_pty};
 use crate::units::Mono;
 
 /// How long to wait before a lost port is tried again.
@@ -39,7 +38,7 @@ pub(super) enum Port {
 
 impl Port {
     pub(super) fn pty() -> Result<Self, ServeError> {
-        let tty::Pty { master, slave, path } = tty::open_pty().map_err(ServeError::Pty)?;
+        let Pty { master, slave, path } = open_pty().map_err(ServeError::Pty)?;
         let (read_out, waits, is_read) = (Mono::default(), false, false);
         Ok(Self::Pty(OwnPty { master: File::from(master), keeper: slave, path, read_out, waits, is_read }))
     }

@@ -3,4 +3,3 @@
 
 pub mod clock;
 pub mod serial;
-pub mod tty;

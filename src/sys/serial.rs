@@ -5,10 +5,13 @@
     reason = "poll and the calls on a tty's queues, which std lacks; serialport gives its descriptor away as a number"
 )]
 
+use std::ffi::{CStr, OsStr};
 use std::fs::File;
 use std::io;
+use std::mem::MaybeUninit;
 use std::os::fd::{AsRawFd, BorrowedFd, FromRawFd, IntoRawFd, OwnedFd};
-use std::path::Path;
+use std::os::unix::ffi::OsStrExt;
+use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 /// Opens a serial port (or the slave of a pseudo-terminal) raw, for this process alone, at a baud rate that was read
@@ -23,13 +26,61 @@ pub fn open_nonblocking(path: &Path, baud: u32) -> io::Result<File> {
     if got != baud {
         return Err(io::Error::other(format!("it took {got} baud instead of {baud}")));
     }
-    // SAFETY: `into_raw_fd` gives the descriptor away; nobody else owns it from here on.
-    let port = unsafe { OwnedFd::from_raw_fd(port.into_raw_fd()) };
+    let port = owned(port.into_raw_fd())?;
     // SAFETY: the descriptor is open; the call takes a number and gives one.
-    if unsafe { libc::fcntl(port.as_raw_fd(), libc::F_SETFL, libc::O_NONBLOCK) } < 0 {
-        return Err(io::Error::last_os_error());
-    }
+    done(unsafe { libc::fcntl(port.as_raw_fd(), libc::F_SETFL, libc::O_NONBLOCK) })?;
     Ok(File::from(port))
+}
+
+/// A fresh pseudo-terminal, raw, so that every byte passes as it is.
+#[derive(Debug)]
+pub struct Pty {
+    /// The end behind the port; reads and writes never wait.
+    pub master: OwnedFd,
+    /// The port's own end. As long as it is open the port keeps its settings, whoever opens and closes it.
+    pub slave: OwnedFd,
+    /// Where others open the port.
+    pub path: PathBuf,
+}
+
+/// Opens a fresh pseudo-terminal.
+///
+/// # Errors
+/// When the system has none to give.
+pub fn open_pty() -> io::Result<Pty> {
+    let flags = libc::O_RDWR | libc::O_NOCTTY | libc::O_CLOEXEC;
+    // SAFETY: no pointers are passed.
+    let master = owned(unsafe { libc::posix_openpt(flags | libc::O_NONBLOCK) })?;
+    // SAFETY: the descriptor is open; the call takes it and nothing else.
+    done(unsafe { libc::unlockpt(master.as_raw_fd()) })?;
+    let mut name = [0_u8; 64];
+    // SAFETY: `name` is a buffer of the length that is told, one byte of it kept back as the end of the string.
+    let error = unsafe { libc::ptsname_r(master.as_raw_fd(), name.as_mut_ptr().cast(), name.len() - 1) };
+    if error != 0 {
+        return Err(io::Error::from_raw_os_error(error));
+    }
+    // SAFETY: the descriptor is open; the call takes a number and gives a descriptor.
+    let slave = owned(unsafe { libc::ioctl(master.as_raw_fd(), libc::TIOCGPTPEER, flags) })?;
+    let mut settings = MaybeUninit::<libc::termios>::uninit();
+    // SAFETY: `settings` is what the call fills, and it is read only where that went well.
+    unsafe {
+        done(libc::tcgetattr(slave.as_raw_fd(), settings.as_mut_ptr()))?;
+        let mut settings = settings.assume_init();
+        libc::cfmakeraw(&raw mut settings);
+        done(libc::tcsetattr(slave.as_raw_fd(), libc::TCSANOW, &raw const settings))?;
+    }
+    let name = CStr::from_bytes_until_nul(&name).map_err(io::Error::other)?;
+    Ok(Pty { master, slave, path: PathBuf::from(OsStr::from_bytes(name.to_bytes())) })
+}
+
+fn done(result: libc::c_int) -> io::Result<()> {
+    if result < 0 { Err(io::Error::last_os_error()) } else { Ok(()) }
+}
+
+fn owned(result: libc::c_int) -> io::Result<OwnedFd> {
+    done(result)?;
+    // SAFETY: a call that opens a descriptor has just given it; nobody else owns it.
+    Ok(unsafe { OwnedFd::from_raw_fd(result) })
 }
 
 /// Waits until one of the descriptors can be read (or has failed), at most `timeout_ms`. A signal ends it early.
@@ -62,11 +113,10 @@ pub fn make_ready(tty: BorrowedFd<'_>) {
 
 #[cfg(test)]
 mod tests {
-    use std::io::Write;
+    use std::io::{Read, Write};
     use std::os::fd::AsFd;
 
     use super::*;
-    use crate::sys::tty::open_pty;
 
     fn is_exclusive(tty: &OwnedFd) -> bool {
         let mut exclusive: libc::c_int = 0;
@@ -87,6 +137,23 @@ mod tests {
         assert!(has_unread(pty.slave.as_fd()));
         make_ready(pty.slave.as_fd());
         assert!(!is_exclusive(&pty.slave) && !has_unread(pty.slave.as_fd()));
+    }
+
+    #[test]
+    fn every_byte_passes_a_pseudo_terminal_as_it_is() {
+        let pty = open_pty().unwrap();
+        let (mut master, mut slave) = (File::from(pty.master), File::from(pty.slave));
+        let all: Vec<u8> = (0..=u8::MAX).collect();
+        let mut got = vec![0; all.len()];
+        master.write_all(&all).unwrap();
+        slave.read_exact(&mut got).unwrap();
+        assert_eq!(got, all);
+        slave.write_all(&all).unwrap();
+        wait_readable([master.as_fd()], 10_000);
+        master.read_exact(&mut got).unwrap();
+        assert_eq!(got, all);
+        assert_eq!(master.read(&mut got).unwrap_err().kind(), io::ErrorKind::WouldBlock);
+        assert!(open_nonblocking(&pty.path, 460_800).is_ok());
     }
 
     #[test]

@@ -169,7 +169,7 @@ fn the_trace_is_on_the_clock_of_the_machine() {
 
 #[test]
 fn a_given_port_is_served_and_an_absent_one_is_an_error() {
-    let line = crate::sys::tty::open_pty().unwrap();
+    let line = crate::sys::serial::open_pty().unwrap();
     let settings = ServeSettings { ports: vec![(1, line.path.clone())], ..ServeSettings::default() };
     let (served, _told) = serve(&settings);
     assert_eq!(served.ports()[1], line.path);
