@@ -180,7 +180,7 @@ impl Host {
 
     pub(super) fn run_ms(&mut self, ms: u64) {
         for _ in 0..ms {
-            if self.now.ns() / 1_000_000 % 5 == 0
+            if (self.now.ns() / 1_000_000).is_multiple_of(5)
                 && let Some((mode, speeds)) = self.drive.clone()
             {
                 for link in 0..self.plan.links.len() {

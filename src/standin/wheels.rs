@@ -65,6 +65,8 @@ impl Progress {
 
 #[cfg(test)]
 mod tests {
+    #![expect(clippy::float_cmp, reason = "values that are set, or handed on as they are")]
+
     use super::*;
 
     fn run(from: f64, to: f64, max_rad_s2: f64, lag_s: f64, dt_s: f64) -> (f64, f64) {

@@ -1,3 +1,5 @@
+#![expect(clippy::float_cmp, reason = "values that are set, or handed on as they are")]
+
 use super::*;
 use crate::shaping::Response;
 

@@ -47,6 +47,24 @@ fn deaf_drivers_speak_but_hear_nothing_and_stop_by_themselves() {
 }
 
 #[test]
+fn wheels_without_torque_are_dragged_along_by_those_that_have_it() {
+    let mut host = Host::running(1, SimSettings::default(), AHEAD);
+    host.run_ms(100);
+    ask(&mut host, "deaf front");
+    host.run_ms(550); // silent for 100 ms, ramped for 500: the front wheels fight the rear ones
+    let fighting = host.sim.truth();
+    assert!(fighting.wheel_rad_s[0] < 2.0 && fighting.wheel_rad_s[2] > 9.0, "{fighting:?}");
+    host.run_ms(1000);
+    let truth = host.sim.truth();
+    assert_eq!(host.feedback(0).status & status::TORQUE_ON, 0);
+    for (speed, skid) in truth.wheel_rad_s.iter().zip(host.plan.layout.skid(&truth.wheel_rad_s)) {
+        close(*speed, 10.0, 0.01);
+        close(skid, 0.0, 0.01);
+    }
+    close(f64::from(host.feedback(0).channels[0].speed) * LSB_RAD_S, 10.0, 0.01);
+}
+
+#[test]
 fn a_cut_line_carries_nothing_either_way() {
     let mut host = Host::running(1, SimSettings::default(), AHEAD);
     host.run_ms(100);
