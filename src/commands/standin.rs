@@ -56,8 +56,13 @@ pub(crate) fn run(args: Args) -> Exit {
         Ok(ports) => ports,
         Err(why) => return fail(Exit::CouldNotRun, why),
     };
-    if let Some(twice) = plan.links.iter().enumerate().find(|(i, _)| ports.iter().filter(|(l, _)| l == i).count() > 1) {
-        return fail(Exit::CouldNotRun, format_args!("link `{}` is given two ports; give it one --port", twice.1.name));
+    if let Some(twice) =
+        plan.links.iter().enumerate().find(|(i, _)| ports.iter().filter(|(l, _)| l == i).count() > 1)
+    {
+        return fail(
+            Exit::CouldNotRun,
+            format_args!("link `{}` is given two ports; give it one --port", twice.1.name),
+        );
     }
     let (wake, woken) = crossbeam_channel::unbounded();
     let on_signal = wake.clone();
@@ -132,7 +137,13 @@ fn read_lines(wake: Sender<Wake>) {
     }
 }
 
-fn serve_until_told(plan: &Plan, served: &Served, woken: &Receiver<Wake>, quiet: bool, until_eof: bool) -> Exit {
+fn serve_until_told(
+    plan: &Plan,
+    served: &Served,
+    woken: &Receiver<Wake>,
+    quiet: bool,
+    until_eof: bool,
+) -> Exit {
     while let Ok(wake) = woken.recv() {
         let said = match wake {
             Wake::Signal => return Exit::Done,
@@ -189,7 +200,9 @@ fn in_words(news: &ServeNews, plan: &Plan) -> Result<String, String> {
     let name = |link: &usize| plan.links.get(*link).map_or("?", |link| link.name.as_str());
     match news {
         ServeNews::Port { link, news: PortNews::Read } => Ok(format!("{}: somebody has come", name(link))),
-        ServeNews::Port { link, news: PortNews::Unread } => Ok(format!("{}: nobody reads any more", name(link))),
+        ServeNews::Port { link, news: PortNews::Unread } => {
+            Ok(format!("{}: nobody reads any more", name(link)))
+        }
         ServeNews::Port { link, news: PortNews::Back } => Ok(format!("{}: the port is back", name(link))),
         ServeNews::Port { link, news: PortNews::Lost(why) } => {
             Err(format!("link `{}`: the port is gone ({why}); it is tried again twice a second", name(link)))
