@@ -2,4 +2,5 @@
 //! it; the pure parts never do.
 
 pub mod clock;
+pub mod serial;
 pub mod tty;
