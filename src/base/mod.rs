@@ -8,6 +8,7 @@ pub mod pose;
 pub mod reach;
 
 pub use layout::{Layout, LayoutProblem, Wheel};
+pub use odometry::Odometry;
 
 use arrayvec::ArrayVec;
 use serde::{Deserialize, Serialize};
