@@ -3,3 +3,4 @@
 
 pub mod clock;
 pub mod serial;
+pub mod tty;

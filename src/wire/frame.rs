@@ -327,3 +327,22 @@ impl<'a> Body<'a> {
         WireError::Value { kind: self.kind, field }
     }
 }
+
+/// The bytes of a Stop before COBS: eight, so that one fits an atomic word ahead of time.
+#[must_use]
+pub fn stop_plain(sequence: u8, ramp_ms: u16) -> [u8; 8] {
+    let [low, high] = ramp_ms.to_le_bytes();
+    let [a, b, c, d] = CRC.checksum(&[kind::STOP, sequence, low, high]).to_le_bytes();
+    [kind::STOP, sequence, low, high, a, b, c, d]
+}
+
+/// An empty frame, which ends whatever was cut off before it, and that Stop: what one write puts on the line.
+#[must_use]
+pub fn stop_on_line(plain: [u8; 8]) -> [u8; 11] {
+    let mut out = [0; 11];
+    if let Some(coded) = out.get_mut(1..10) {
+        // Eight bytes take nine: there is room.
+        let _ = cobs::try_encode(&plain, coded);
+    }
+    out
+}

@@ -11,7 +11,10 @@ pub mod driver;
 pub mod frame;
 
 pub use deframe::Deframer;
-pub use frame::{WireError, emit_from_drivers, emit_to_drivers, kind, parse_from_drivers, parse_to_drivers};
+pub use frame::{
+    WireError, emit_from_drivers, emit_to_drivers, kind, parse_from_drivers, parse_to_drivers, stop_on_line,
+    stop_plain,
+};
 
 use arrayvec::{ArrayString, ArrayVec};
 use serde::{Deserialize, Serialize};
