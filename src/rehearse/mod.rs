@@ -1,1 +1,2 @@
-//! To be filled.
+//! The whole drive on a simulated base.
+pub mod script;
