@@ -297,6 +297,9 @@ impl Core {
 
     /// The guards on the wheels: with torque they trip, without it turning wheels are only told.
     fn wheel_fault(&mut self, now: Mono, out: &mut Outputs) -> Option<Cause> {
+        let quiet_ns = self.settings.times.feedback_quiet_ns;
+        let fresh =
+            self.state.links.iter().all(|it| it.feedback_age_ns(now).is_some_and(|age| age <= quiet_ns));
         let State { guards, wheels, sent, driver_stop, phase, .. } = &mut self.state;
         let layout = &self.shaper.settings().layout;
         let look = Look { now, settings: &self.settings, layout, wheels, sent };
@@ -308,7 +311,8 @@ impl Core {
                 None
             }
             Phase::Tripped => match driver_stop {
-                Some(stop) if !stop.escalated() => stop.not_slowing(&look),
+                // What was measured before the line went quiet tells nothing about the ramp.
+                Some(stop) if !stop.escalated() && fresh => stop.not_slowing(&look),
                 Some(_) | None => None,
             },
             Phase::Ready => guards.runaway(&look),

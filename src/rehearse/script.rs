@@ -2,23 +2,23 @@
 
 use std::fmt::Write as _;
 
-use crate::config::{PadButton, PadPlan, SignedAxis};
+use crate::config::{PadButton, PadPlan, Plan, SignedAxis};
 
 /// The drive as text for `--hands`, and the moments that the rehearsal itself must know.
 #[derive(Clone, Debug)]
-pub struct Drive {
+pub(super) struct Drive {
     /// Lines `seconds,input,value`.
-    pub hands: String,
+    pub(super) hands: String,
     /// The square in the room's frame: from the first to the last stick movement of it.
-    pub square_s: (f64, f64),
+    pub(super) square_s: (f64, f64),
     /// When the line is to be cut, and when it is to be joined again.
-    pub line_cut_s: (f64, f64),
+    pub(super) line_cut_s: (f64, f64),
     /// When the script ends.
-    pub end_s: f64,
+    pub(super) end_s: f64,
 }
 
 /// The least time the whole of it takes. `--seconds` stretches the pauses and the legs, never below this.
-pub const SHORTEST_S: f64 = 20.0;
+pub(super) const SHORTEST_S: f64 = 20.0;
 /// How long it takes unless told.
 pub const USUAL_S: f64 = 25.0;
 
@@ -30,11 +30,14 @@ const SQUARE_TURN: f64 = 0.5;
 /// The whole drive: ready, a square in the room's frame while the base turns, a release, an emergency stop in full
 /// travel, a reset, a pad pulled out, a line cut, and home.
 #[must_use]
-pub fn whole_drive(pad: &PadPlan, faster_paces: usize, seconds: f64) -> Drive {
-    let mut hands = Hands { pad, text: String::new(), at_s: 0.0, stretch: seconds.max(SHORTEST_S) / USUAL_S };
+pub(super) fn whole_drive(plan: &Plan, seconds: f64) -> Drive {
+    let pad = &plan.pad;
+    let stretch = seconds.max(SHORTEST_S) / USUAL_S;
+    let mut hands =
+        Hands { pad, text: String::new(), at_s: 0.0, stretch, reset_hold_s: plan.guard.reset_hold_s };
     hands.wait(0.7);
     hands.click(pad.ready);
-    if faster_paces > 0 {
+    if plan.paces.len() > 1 {
         hands.click(pad.pace_up);
     }
     hands.click(pad.frame);
@@ -112,6 +115,7 @@ struct Hands<'a> {
     text: String,
     at_s: f64,
     stretch: f64,
+    reset_hold_s: f64,
 }
 
 impl Hands<'_> {
@@ -146,7 +150,7 @@ impl Hands<'_> {
     /// Reset is held: its time is the guard's, not stretched below it.
     fn reset_and_ready(&mut self) {
         self.line(&format!("{:?}", self.pad.reset), "1");
-        self.at_s += RESET_HELD_S.max(1.3 * self.stretch);
+        self.at_s += self.reset_hold_s + 0.25;
         self.release(self.pad.reset);
         self.wait(0.2);
         self.click(self.pad.ready);
@@ -162,6 +166,3 @@ impl Hands<'_> {
         }
     }
 }
-
-/// Longer than the default `reset_hold_s` of one second, with room for a slow start of the ramp before it.
-const RESET_HELD_S: f64 = 1.25;
