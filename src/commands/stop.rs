@@ -34,6 +34,10 @@ const ANSWER_WITHIN: Duration = Duration::from_millis(200);
 const LATCH_WITHIN_NS: u64 = 1_000_000_000;
 
 pub(crate) fn run(args: Args) -> Exit {
+    // systemd.exec(5): set for ExecStopPost. A drive that ended in order has parked its drivers or left them latched.
+    if args.last_act && std::env::var("SERVICE_RESULT").is_ok_and(|it| it == "success") {
+        return print("the drive ended in order: nothing to stop\n");
+    }
     if !args.last_act {
         let socket = match super::find_socket(args.config.as_deref()) {
             Ok(socket) => Some(socket),

@@ -122,6 +122,15 @@ impl<F: Fn(Puller)> Thread<F> {
                 if let Some(axis) = ours(axis) {
                     self.state.axis(axis, f64::from(value));
                 }
+                // Pads that gilrs has no layout for tell a trigger as an axis, from -1 released.
+                let trigger = match axis {
+                    gilrs::Axis::LeftZ => gilrs::Button::LeftTrigger2,
+                    gilrs::Axis::RightZ => gilrs::Button::RightTrigger2,
+                    _ => return,
+                };
+                if self.gilrs.gamepad(event.id).button_code(trigger).is_none() {
+                    self.button(trigger, f64::from(value).midpoint(1.0));
+                }
             }
             EventType::ButtonChanged(button, value, _) => self.button(button, f64::from(value)),
             // gilrs tells every change of a button as a value, and beside it press and release at thresholds of its own:
@@ -204,10 +213,14 @@ impl<F: Fn(Puller)> Thread<F> {
             }
         }
         for button in ALL_BUTTONS {
-            let Some(code) = pad.button_code(choose::button(button)).map(|it| it.into_u32()) else {
-                continue;
+            // A trigger that is told as an axis, as in `event`.
+            let trigger = match choose::button(button) {
+                gilrs::Button::LeftTrigger2 => pad.axis_code(gilrs::Axis::LeftZ),
+                gilrs::Button::RightTrigger2 => pad.axis_code(gilrs::Axis::RightZ),
+                _ => None,
             };
-            if let Some(value) = button_value(watch, code) {
+            let code = pad.button_code(choose::button(button)).or(trigger).map(|it| it.into_u32());
+            if let Some(value) = code.and_then(|code| button_value(watch, code)) {
                 self.state.button(button, value, true);
             }
         }
