@@ -42,7 +42,9 @@ impl Gyro {
             self.learn(rate_rad_s, span_s);
             return (Some(0.0), changed);
         }
-        (Some((rate_rad_s - self.bias_rad_s) * span_s), changed)
+        // Before the first standstill its bias is not known.
+        let turned = (self.learnt_s > 0.0).then(|| (rate_rad_s - self.bias_rad_s) * span_s);
+        (turned, changed)
     }
 
     fn learn(&mut self, rate_rad_s: f64, span_s: f64) {

@@ -6,7 +6,7 @@ use gripline::core::settings::longest_ramp_ms;
 use gripline::core::{Event, Phase, words};
 use gripline::wire::{Identity, Mode, ToDrivers};
 
-use crate::world::{World, four_mecanum, four_omni};
+use crate::world::{World, four_mecanum, four_omni, patient_drivers};
 
 fn drives(world: &World, link: u8) -> usize {
     let of_link = world.out.frames.iter().filter(|it| it.link == link);
@@ -138,7 +138,7 @@ fn sequences_go_on_by_one_a_frame_and_stops_fit_in() {
 
 #[test]
 fn nothing_is_sent_while_more_than_one_frame_is_unsent() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(patient_drivers()).to_ready();
     for (unsent, sends) in [(0, 1), (1, 1), (2, 0), (9, 0)] {
         world.boards[0].unsent = Some(unsent);
         world.tick();
@@ -152,9 +152,7 @@ fn nothing_is_sent_while_more_than_one_frame_is_unsent() {
 
 #[test]
 fn without_a_count_unacknowledged_frames_hold_sending_back_but_never_starve_the_link() {
-    let mut world = World::new(crate::world::plan(
-        &include_str!("../../config/four-mecanum.toml").replace("valid_ms = 100", "valid_ms = 900"),
-    ));
+    let mut world = World::new(patient_drivers());
     world.boards[0].unsent = None;
     let mut world = world.to_ready();
     for _ in 0..100 {

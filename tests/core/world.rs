@@ -15,15 +15,15 @@ use gripline::wire::{
 /// Steps of the drivers and wheels.
 const STEP_US: u64 = 250;
 
-pub fn four_mecanum() -> Plan {
+pub(crate) fn four_mecanum() -> Plan {
     plan(include_str!("../../config/four-mecanum.toml"))
 }
 
-pub fn four_omni() -> Plan {
+pub(crate) fn four_omni() -> Plan {
     plan(include_str!("../../config/four-omni.toml"))
 }
 
-pub fn plan(text: &str) -> Plan {
+pub(crate) fn plan(text: &str) -> Plan {
     match config::parse(text, "test.toml") {
         Ok((plan, _)) => plan,
         Err(mistakes) => panic!("{}", mistakes.iter().map(ToString::to_string).collect::<String>()),
@@ -31,40 +31,40 @@ pub fn plan(text: &str) -> Plan {
 }
 
 /// The four mecanum wheels with more lines at the end of the configuration.
-pub fn mecanum_with(more: &str) -> Plan {
+pub(crate) fn mecanum_with(more: &str) -> Plan {
     plan(&format!("{}\n{more}", include_str!("../../config/four-mecanum.toml")))
 }
 
 /// One link's drivers and their wheels.
-pub struct Board {
-    pub driver: Driver,
-    pub identity: Identity,
+pub(crate) struct Board {
+    pub(crate) driver: Driver,
+    pub(crate) identity: Identity,
     deframer: Deframer,
     angle: Vec<f64>,
     speed: Vec<f64>,
     /// Speed counts to angle counts a second.
     angle_rate: f64,
     /// Its own clock is this far ahead of ours.
-    pub clock_ahead_us: u64,
-    pub open: bool,
-    pub openings: u32,
+    pub(crate) clock_ahead_us: u64,
+    pub(crate) open: bool,
+    pub(crate) openings: u32,
     /// It hears nothing.
-    pub deaf: bool,
+    pub(crate) deaf: bool,
     /// It does not hear Clear.
-    pub deaf_to_clear: bool,
+    pub(crate) deaf_to_clear: bool,
     /// Nothing of it is heard.
-    pub mute: bool,
+    pub(crate) mute: bool,
     /// Added to the speeds that it reports, in counts.
-    pub report_offset: Vec<f64>,
+    pub(crate) report_offset: Vec<f64>,
     /// Channels that turn at this speed (counts) whatever they are told.
-    pub stuck: Vec<Option<f64>>,
-    pub bits: u16,
-    pub stop_input_open: bool,
-    pub yaw_rate: Option<i16>,
-    pub write_blocked: bool,
-    pub unsent: Option<u16>,
+    pub(crate) stuck: Vec<Option<f64>>,
+    pub(crate) bits: u16,
+    pub(crate) stop_input_open: bool,
+    pub(crate) yaw_rate: Option<i16>,
+    pub(crate) write_blocked: bool,
+    pub(crate) unsent: Option<u16>,
     /// Lag of its wheels.
-    pub lag_s: f64,
+    pub(crate) lag_s: f64,
     heard: LinkInput,
 }
 
@@ -109,17 +109,17 @@ impl Board {
     }
 
     /// Power off and on.
-    pub fn restart(&mut self, now_us: u64) {
+    pub(crate) fn restart(&mut self, now_us: u64) {
         self.identity.boot = self.identity.boot.wrapping_add(1);
         self.driver = Driver::new(self.identity.clone(), now_us + self.clock_ahead_us);
         self.angle.iter_mut().for_each(|it| *it = 0.0);
     }
 
-    pub fn set_angle(&mut self, channel: usize, counts: f64) {
+    pub(crate) fn set_angle(&mut self, channel: usize, counts: f64) {
         self.angle[channel] = counts;
     }
 
-    pub fn speed_counts(&self, channel: usize) -> f64 {
+    pub(crate) fn speed_counts(&self, channel: usize) -> f64 {
         self.speed[channel]
     }
 
@@ -201,31 +201,36 @@ impl Board {
     }
 }
 
+/// Four mecanum wheels with a validity that runs out late, so that the host's guards are seen alone.
+pub(crate) fn patient_drivers() -> Plan {
+    plan(&include_str!("../../config/four-mecanum.toml").replace("valid_ms = 100", "valid_ms = 900"))
+}
+
 /// All of it.
-pub struct World {
-    pub plan: Plan,
-    pub core: Core,
-    pub boards: Vec<Board>,
-    pub pad: PadInput,
+pub(crate) struct World {
+    pub(crate) plan: Plan,
+    pub(crate) core: Core,
+    pub(crate) boards: Vec<Board>,
+    pub(crate) pad: PadInput,
     /// The pad gives no sign of life.
-    pub pad_silent: bool,
-    pub console: ConsoleInput,
-    pub quit: bool,
-    pub stop_line: Option<Pull>,
+    pub(crate) pad_silent: bool,
+    pub(crate) console: ConsoleInput,
+    pub(crate) quit: bool,
+    pub(crate) stop_line: Option<Pull>,
     pulls: u32,
-    pub now_us: u64,
+    pub(crate) now_us: u64,
     /// The tick wakes this much after it is due.
-    pub late_us: u64,
+    pub(crate) late_us: u64,
     /// What the last tick saw and decided.
-    pub inputs: Inputs,
-    pub out: Outputs,
-    pub events: Vec<Event>,
+    pub(crate) inputs: Inputs,
+    pub(crate) out: Outputs,
+    pub(crate) events: Vec<Event>,
     /// Every tick, for playing it again.
-    pub tape: Vec<(Inputs, Outputs)>,
+    pub(crate) tape: Vec<(Inputs, Outputs)>,
 }
 
 impl World {
-    pub fn new(plan: Plan) -> Self {
+    pub(crate) fn new(plan: Plan) -> Self {
         let boards = (0..plan.links.len()).map(|link| Board::new(&plan, link)).collect();
         Self {
             core: Core::new(&plan),
@@ -246,20 +251,20 @@ impl World {
         }
     }
 
-    pub fn period_us(&self) -> u64 {
+    pub(crate) fn period_us(&self) -> u64 {
         self.plan.tick.period_ns() / 1000
     }
 
-    pub fn period_s(&self) -> f64 {
+    pub(crate) fn period_s(&self) -> f64 {
         self.plan.tick.period_s()
     }
 
-    pub fn now_s(&self) -> f64 {
+    pub(crate) fn now_s(&self) -> f64 {
         self.now_us as f64 * 1e-6
     }
 
     /// Lets time pass for drivers and wheels alone, as when the program is suspended.
-    pub fn let_pass(&mut self, us: u64) {
+    pub(crate) fn let_pass(&mut self, us: u64) {
         let end = self.now_us + us;
         while self.now_us < end {
             self.now_us += STEP_US;
@@ -270,7 +275,7 @@ impl World {
     }
 
     /// What the next tick would see.
-    pub fn see(&mut self) -> Inputs {
+    pub(crate) fn see(&mut self) -> Inputs {
         self.let_pass(self.period_us());
         if !self.pad_silent {
             self.pad.last_sign = Mono::from_ns(self.now_us * 1000);
@@ -289,12 +294,12 @@ impl World {
         }
     }
 
-    pub fn tick(&mut self) -> &Outputs {
+    pub(crate) fn tick(&mut self) -> &Outputs {
         let inputs = self.see();
         self.step(inputs)
     }
 
-    pub fn step(&mut self, inputs: Inputs) -> &Outputs {
+    pub(crate) fn step(&mut self, inputs: Inputs) -> &Outputs {
         let out = self.core.step(&inputs);
         self.promises(&out);
         if out.pull_stop {
@@ -322,7 +327,7 @@ impl World {
     }
 
     /// Pulls the stop line, without writing.
-    pub fn pull(&mut self, by: Puller) {
+    pub(crate) fn pull(&mut self, by: Puller) {
         self.pulls += 1;
         self.stop_line = Some(Pull { number: self.pulls, by });
     }
@@ -332,18 +337,18 @@ impl World {
         promises(&self.plan, out);
     }
 
-    pub fn ticks(&mut self, n: usize) {
+    pub(crate) fn ticks(&mut self, n: usize) {
         for _ in 0..n {
             self.tick();
         }
     }
 
-    pub fn run_s(&mut self, s: f64) {
+    pub(crate) fn run_s(&mut self, s: f64) {
         self.ticks((s / self.period_s()).round() as usize);
     }
 
     /// Ticks until something is so; how long that took.
-    pub fn until(&mut self, most_s: f64, what: &str, so: impl Fn(&Self) -> bool) -> f64 {
+    pub(crate) fn until(&mut self, most_s: f64, what: &str, so: impl Fn(&Self) -> bool) -> f64 {
         let from = self.now_s();
         while !so(self) {
             assert!(self.now_s() - from < most_s, "{what}: not within {most_s} s; {:?}", self.out);
@@ -352,48 +357,49 @@ impl World {
         self.now_s() - from
     }
 
-    pub fn phase(&self) -> Phase {
+    pub(crate) fn phase(&self) -> Phase {
         self.out.phase
     }
 
     /// The code of the cause that stands.
-    pub fn cause(&self) -> &'static str {
+    pub(crate) fn cause(&self) -> &'static str {
         self.out.cause.as_ref().map_or("", |it| it.code())
     }
 
-    pub fn press(&mut self, buttons: Buttons) {
+    pub(crate) fn press(&mut self, buttons: Buttons) {
         self.pad.down = self.pad.down.with(buttons);
         self.pad.pressed = self.pad.pressed.with(buttons);
     }
 
-    pub fn let_go(&mut self, buttons: Buttons) {
+    pub(crate) fn let_go(&mut self, buttons: Buttons) {
         self.pad.down = self.pad.down.without(buttons);
     }
 
     /// A button pressed for one tick.
-    pub fn tap(&mut self, buttons: Buttons) {
+    pub(crate) fn tap(&mut self, buttons: Buttons) {
         self.press(buttons);
         self.tick();
         self.let_go(buttons);
     }
 
-    pub fn hold(&mut self, value: f64) {
+    pub(crate) fn hold(&mut self, value: f64) {
         self.pad.hold = value;
         self.pad.hold_least = self.pad.hold_least.min(value);
     }
 
-    pub fn sticks(&mut self, x: f64, y: f64, turn: f64) {
+    pub(crate) fn sticks(&mut self, x: f64, y: f64, turn: f64) {
         self.pad.sticks = Sticks { x, y, turn };
     }
 
-    pub fn to_parked(mut self) -> Self {
+    pub(crate) fn to_parked(mut self) -> Self {
         self.until(2.0, "nothing stands against Ready", |it| {
             it.phase() == Phase::Parked && it.out.view.waits_for.is_none() && !it.tape.is_empty()
         });
+        self.ticks(3);
         self
     }
 
-    pub fn to_ready(mut self) -> Self {
+    pub(crate) fn to_ready(mut self) -> Self {
         self = self.to_parked();
         self.tap(Buttons::READY);
         assert_eq!(self.phase(), Phase::Ready, "{:?}", self.out);
@@ -401,7 +407,7 @@ impl World {
         self
     }
 
-    pub fn to_driving(mut self) -> Self {
+    pub(crate) fn to_driving(mut self) -> Self {
         self = self.to_ready();
         self.hold(1.0);
         self.tick();
@@ -410,7 +416,7 @@ impl World {
     }
 
     /// Driving with these sticks until the speed has settled.
-    pub fn at_speed(mut self, x: f64, y: f64, turn: f64) -> Self {
+    pub(crate) fn at_speed(mut self, x: f64, y: f64, turn: f64) -> Self {
         self = self.to_driving();
         self.sticks(x, y, turn);
         self.run_s(1.5);
@@ -418,7 +424,7 @@ impl World {
         self
     }
 
-    pub fn to_stopping(mut self) -> Self {
+    pub(crate) fn to_stopping(mut self) -> Self {
         self = self.at_speed(1.0, 0.0, 0.0);
         self.hold(0.0);
         self.sticks(0.0, 0.0, 0.0);
@@ -428,7 +434,7 @@ impl World {
     }
 
     /// Tripped by the console from Ready, latched and at rest.
-    pub fn to_tripped(mut self) -> Self {
+    pub(crate) fn to_tripped(mut self) -> Self {
         self = self.to_ready();
         self.console.stop = true;
         self.tick();
@@ -437,7 +443,7 @@ impl World {
         self
     }
 
-    pub fn in_phase(plan: Plan, phase: Phase) -> Self {
+    pub(crate) fn in_phase(plan: Plan, phase: Phase) -> Self {
         let world = Self::new(plan);
         match phase {
             Phase::Parked => world.to_parked(),
@@ -449,7 +455,7 @@ impl World {
     }
 
     /// Holds the reset button until Parked or until it can't be.
-    pub fn reset(&mut self) {
+    pub(crate) fn reset(&mut self) {
         self.press(Buttons::RESET);
         self.run_s(self.plan.guard.reset_hold_s + 0.7);
         self.let_go(Buttons::RESET);
@@ -457,13 +463,13 @@ impl World {
     }
 
     /// Some event was told since the events were last cleared.
-    pub fn told(&self, it_is: impl Fn(&Event) -> bool) -> bool {
+    pub(crate) fn told(&self, it_is: impl Fn(&Event) -> bool) -> bool {
         self.events.iter().any(it_is)
     }
 }
 
 /// Wheels are told to turn only in Driving and Stopping; every frame fits its phase; no wheel is clamped alone.
-pub fn promises(plan: &Plan, out: &Outputs) {
+pub(crate) fn promises(plan: &Plan, out: &Outputs) {
     let motion = matches!(out.phase, Phase::Driving | Phase::Stopping);
     for frame in &out.frames {
         let link = &plan.links[usize::from(frame.link)];
