@@ -10,7 +10,7 @@ use super::link::Link;
 use super::sent::Sent;
 use super::settings::Settings;
 use super::wheels::Wheels;
-use super::{Cause, MAX_LINKS};
+use super::{Cause, Core, MAX_LINKS};
 use crate::shaping::{Frame, ShaperState};
 use crate::units::Mono;
 
@@ -21,8 +21,8 @@ pub struct CoreState {
     pub(super) shaper: ShaperState,
 }
 
-/// Few enough to be kept in place.
-pub(super) type PerLink<T> = ArrayVec<T, MAX_LINKS>;
+/// One value a link: few enough to be kept in place.
+pub type PerLink<T> = ArrayVec<T, MAX_LINKS>;
 
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(super) struct State {
@@ -99,38 +99,48 @@ pub struct Outline {
     pub phase: Phase,
     /// The code of the cause.
     pub cause: Option<&'static str>,
-    /// The hold control: pressed, and a press would count.
-    pub hold: (bool, bool),
+    /// The hold control is pressed.
+    pub pressed: bool,
+    /// A press would count.
+    pub armed: bool,
     /// Nothing left to send by the shaper.
     pub at_rest: bool,
     /// A pad is there.
     pub pad_present: bool,
     /// The orderly end has been asked.
     pub quitting: bool,
-    /// The reset button is being held, Clear is on its way, the console may not reset.
-    pub reset: (bool, bool, bool),
-    /// A link each: open, as planned, heard, said to be latched.
-    pub links: Vec<[bool; 4]>,
-    /// A stop has been asked of the drivers, with torque off at once.
+    /// The reset button is being held.
+    pub resetting: bool,
+    /// Clear is on its way.
+    pub clearing: bool,
+    /// The console may not reset.
+    pub reset_at_pad: bool,
+    /// The stop of this trip takes the torque off at once.
     pub category_zero: bool,
+    /// A link each: open, as planned, heard, said to be latched.
+    pub links: PerLink<[bool; 4]>,
 }
 
-impl CoreState {
-    /// Without times and numbers.
+impl Core {
+    /// The state without times and numbers.
     #[must_use]
     pub fn outline(&self) -> Outline {
         let state = &self.state;
+        let (pressed, armed) = state.hold.outline();
         let links = state.links.iter().map(|it| [it.open, it.as_planned(), it.heard.is_some(), it.latched()]);
         Outline {
             phase: state.phase,
             cause: state.cause.map(|it| it.code()),
-            hold: state.hold.outline(),
+            pressed,
+            armed,
             at_rest: self.shaper.at_rest(),
             pad_present: state.pad_present,
             quitting: state.quitting.is_some(),
-            reset: (state.reset_since.is_some(), state.clearing.is_some(), state.reset_at_pad),
-            links: links.collect(),
+            resetting: state.reset_since.is_some(),
+            clearing: state.clearing.is_some(),
+            reset_at_pad: state.reset_at_pad,
             category_zero: state.driver_stop.as_ref().is_some_and(|it| it.ramp_ms == 0),
+            links: links.collect(),
         }
     }
 }

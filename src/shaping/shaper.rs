@@ -101,14 +101,6 @@ pub struct ShaperState {
     heading_rad: f64,
 }
 
-impl ShaperState {
-    /// Nothing left to send: velocity and every sample of the average are zero.
-    #[must_use]
-    pub fn at_rest(&self) -> bool {
-        self.velocity == Twist::ZERO && self.average.at_rest()
-    }
-}
-
 /// The state of shaping: present velocity, moving average, frame.
 #[derive(Clone, Debug)]
 pub struct Shaper {
@@ -226,7 +218,7 @@ impl Shaper {
     /// Nothing left to send: velocity and every sample of the average are zero.
     #[must_use]
     pub fn at_rest(&self) -> bool {
-        self.state.at_rest()
+        self.state.velocity == Twist::ZERO && self.state.average.at_rest()
     }
 
     fn want(&mut self, wanted: Region) {
