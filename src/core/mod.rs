@@ -5,11 +5,18 @@ pub mod budget;
 pub mod cause;
 pub mod event;
 mod guards;
+mod gyro;
 mod hold;
 pub mod io;
 mod link;
+mod motion;
+mod operator;
 pub mod phase;
+mod reset;
+mod send;
+mod sent;
 pub mod settings;
+pub mod state;
 mod step;
 mod wheels;
 pub mod words;
@@ -17,7 +24,8 @@ pub mod words;
 pub use cause::Cause;
 pub use event::Event;
 pub use io::{Inputs, Outputs, Phase};
-pub use step::{Core, CoreState};
+pub use state::CoreState;
+pub use step::Core;
 
 /// The most links one base may have.
 pub const MAX_LINKS: usize = 8;

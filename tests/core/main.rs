@@ -1,0 +1,11 @@
+//! The core as a whole, in simulated time.
+
+#![expect(clippy::unwrap_used, clippy::panic, clippy::float_cmp, reason = "tests: a surprise is a failure")]
+
+mod drive;
+mod guards;
+mod links;
+mod phases;
+mod replay;
+mod total;
+mod world;
