@@ -1,13 +1,12 @@
 //! TOML to a checked [`Plan`], with the line and the reason for each refusal.
 
-pub mod checks;
+mod checks;
 pub mod keys;
 mod mistake;
 mod parse;
 pub mod plan;
 mod reader;
 
-pub use checks::link_load;
 pub use mistake::Mistake;
 pub use parse::{ConfigError, load, parse};
 pub use plan::*;

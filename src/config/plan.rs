@@ -6,6 +6,11 @@ use crate::base::{Layout, Wheel};
 use crate::shaping::{Limits, Pace, Response};
 use crate::wire::size;
 
+/// The most links one base may have.
+pub const MAX_LINKS: usize = 8;
+/// The most paces one base may have.
+pub const MAX_PACES: usize = 32;
+
 /// Everything that a configuration says, checked.
 #[derive(Clone, Debug)]
 pub struct Plan {

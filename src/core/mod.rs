@@ -19,5 +19,4 @@ pub use event::Event;
 pub use io::{Inputs, Outputs, Phase};
 pub use step::{Core, CoreState};
 
-/// The most links one base may have.
-pub const MAX_LINKS: usize = 8;
+pub use crate::config::MAX_LINKS;
