@@ -50,7 +50,7 @@ fn cases() -> Vec<Case<'static>> {
                 (("+", line), None) => becomes += &format!("{line}\n"),
                 (("=", words), None) => wrong.push(words),
                 (("~", words), None) => odd.push(words),
-                _ => panic!("{about}: what is {line:?}"),
+                _ => unreachable!("{about}: what is {line:?}"),
             }
         }
         replace(&mut was, &mut becomes);

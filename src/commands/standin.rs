@@ -4,7 +4,7 @@ use std::io::{BufRead, Write};
 use std::path::PathBuf;
 
 use crossbeam_channel::{Receiver, Sender};
-use gripline::config::Plan;
+use gripline::config::{self, Plan};
 use gripline::standin::fault::{self, Asked};
 use gripline::standin::serve::{self, PortNews, ServeError, ServeNews, ServeSettings, Served};
 use gripline::standin::sim::SimSettings;
@@ -48,9 +48,9 @@ enum Wake {
 }
 
 pub(crate) fn run(args: Args) -> Exit {
-    let plan = match super::read_plan(&args.config) {
-        Ok(plan) => plan,
-        Err(exit) => return exit,
+    let plan = match config::load(&args.config) {
+        Ok((plan, _)) => plan,
+        Err(why) => return fail(Exit::CouldNotRun, why),
     };
     let ports = match args.port.iter().map(|port| given_port(port, &plan)).collect::<Result<Vec<_>, _>>() {
         Ok(ports) => ports,

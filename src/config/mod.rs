@@ -8,7 +8,7 @@ pub mod plan;
 mod reader;
 
 pub use mistake::Mistake;
-pub use parse::{ConfigError, load, parse};
+pub use parse::{ConfigError, load, parse, wheels};
 pub use plan::*;
 
 /// The configuration that `rehearse` uses unless another is given.

@@ -73,6 +73,17 @@ pub fn parse(text: &str, file: &str) -> Result<(Plan, Vec<Mistake>), Vec<Mistake
     }
 }
 
+/// The wheels' names and geometry alone, where they can be read, whatever else is wrong with a text.
+#[must_use]
+pub fn wheels(text: &str) -> Option<Vec<(String, Wheel)>> {
+    let notes = Notes::new("", text);
+    let (root, _) = DeTable::parse_recoverable(text);
+    let sections = Section::several(&notes, &root, "wheel");
+    let all: Option<Vec<_>> =
+        sections.iter().map(|it| Some((it.text("name")?.value, geometry(it)?))).collect();
+    all.filter(|it| !it.is_empty())
+}
+
 /// Reads every table before it gives up, so that all mistakes come out at once.
 fn plan(notes: &Notes<'_>, root: &toml::Spanned<DeTable<'_>>) -> Option<Plan> {
     refuse_unknown_tables(notes, root);
@@ -163,29 +174,33 @@ fn link(section: &Section<'_>) -> Option<LinkPlan> {
 }
 
 fn wheel(section: &Section<'_>, links: &Links<'_>, notes: &Notes<'_>) -> Option<WheelPlan> {
-    let (name, at) = (section.text("name"), section.pair("at_m"));
-    let (drive, roller, radius) =
-        (section.number("drive_deg"), section.number("roller_deg"), section.number("radius_m"));
+    let (name, geometry) = (section.text("name"), geometry(section));
     let (speed, acceleration) = (section.number("max_rad_s"), section.number("max_rad_s2"));
     let (link_name, channel) = (section.text("link"), section.whole("channel"));
     let (reversed, gear) = (section.flag("reversed"), section.number("gear"));
     let link = link_name.and_then(|name| named(&name, links, notes));
-    let [x_m, y_m] = at?.value;
     Some(WheelPlan {
         name: name?.value,
-        geometry: Wheel {
-            x_m,
-            y_m,
-            drive_rad: rad(drive?.value),
-            roller_rad: rad(roller?.value),
-            radius_m: radius?.value,
-        },
+        geometry: geometry?,
         max_rad_s: speed?.value,
         max_rad_s2: acceleration?.value,
         link: link?,
         channel: u8::try_from(channel?.value).ok()?,
         reversed: reversed?.value,
         gear: gear?.value,
+    })
+}
+
+fn geometry(section: &Section<'_>) -> Option<Wheel> {
+    let (at, radius) = (section.pair("at_m"), section.number("radius_m"));
+    let (drive, roller) = (section.number("drive_deg"), section.number("roller_deg"));
+    let [x_m, y_m] = at?.value;
+    Some(Wheel {
+        x_m,
+        y_m,
+        drive_rad: rad(drive?.value),
+        roller_rad: rad(roller?.value),
+        radius_m: radius?.value,
     })
 }
 

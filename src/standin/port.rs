@@ -2,11 +2,11 @@
 
 use std::fs::File;
 use std::io::{ErrorKind, Read, Write};
-use std::os::fd::{AsFd, BorrowedFd, OwnedFd};
+use std::os::fd::{AsFd, BorrowedFd};
 use std::path::{Path, PathBuf};
 
 use super::serve::ServeError;
-use crate::sys::serial::{Pty, has_unread, make_ready, open_nonblocking, open_pty};
+use crate::sys::serial::{KeptPty, has_unread, make_ready, open_kept_pty, open_nonblocking};
 use crate::units::Mono;
 
 /// How long to wait before a lost port is tried again.
@@ -38,9 +38,9 @@ pub(super) enum Port {
 
 impl Port {
     pub(super) fn pty() -> Result<Self, ServeError> {
-        let Pty { master, slave, path } = open_pty().map_err(ServeError::Pty)?;
+        let KeptPty { master, slave, path } = open_kept_pty().map_err(ServeError::Pty)?;
         let (read_out, waits, is_read) = (Mono::default(), false, false);
-        Ok(Self::Pty(OwnPty { master: File::from(master), keeper: slave, path, read_out, waits, is_read }))
+        Ok(Self::Pty(OwnPty { master, keeper: slave, path, read_out, waits, is_read }))
     }
 
     pub(super) fn given(path: &Path, baud: u32) -> Result<Self, ServeError> {
@@ -89,7 +89,7 @@ impl Port {
 #[derive(Debug)]
 pub(super) struct OwnPty {
     master: File,
-    keeper: OwnedFd,
+    keeper: File,
     path: PathBuf,
     /// When nothing was last seen to wait for the host.
     read_out: Mono,

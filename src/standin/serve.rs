@@ -15,7 +15,7 @@ use super::sim::{Sim, SimSettings, Truth};
 use super::trace::Trace;
 use crate::config::Plan;
 use crate::sys::clock;
-use crate::sys::serial::wait_readable;
+use crate::sys::serial::wait_any;
 use crate::units::Mono;
 
 /// The longest wait between two looks at the clock; bytes wake it sooner.
@@ -222,7 +222,7 @@ impl<F: FnMut(ServeNews)> Server<F> {
     fn run(mut self) {
         let mut flush_at = Mono::default();
         while !self.stop.load(Ordering::Relaxed) {
-            wait_readable(self.ports.iter().filter_map(Port::descriptor), WAIT_MS);
+            wait_any(self.ports.iter().filter_map(Port::descriptor), WAIT_MS);
             let now = clock::now();
             self.turn(now);
             if now >= flush_at {

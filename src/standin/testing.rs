@@ -1,14 +1,11 @@
 //! What the tests of the stand-in share: a base of an invented kind, and a host that speaks to it.
 
-use std::path::PathBuf;
-
 use arrayvec::ArrayVec;
 
 use super::sim::{Sim, SimSettings};
-use crate::base::{Layout, PerWheel, Twist, Wheel};
-use crate::config::*;
-use crate::shaping::{Limits, Pace, Response, Saturation};
-use crate::units::{Mono, rad};
+use crate::base::{PerWheel, Twist};
+use crate::config::{Plan, parse};
+use crate::units::Mono;
 use crate::wire::{
     Deframer, Drive, Feedback, FromDrivers, Identity, MAX_ON_LINE, Mode, ToDrivers, emit_to_drivers,
     parse_from_drivers,
@@ -16,103 +13,33 @@ use crate::wire::{
 
 pub(super) const LSB_RAD_S: f64 = 0.002;
 
-/// Four mecanum wheels on an oblong; the two rear ones hang on a second link, reversed and geared.
+/// Four mecanum wheels on an oblong; the two rear ones hang on a second link, reversed and geared, with a channel
+/// between them that turns nothing.
+const CONFIG: &str = r#"
+base = { name = "hay barrow", outline_m = [0.6, 0.8] }
+wheel = [
+    { name = "front left", at_m = [0.20, 0.15], roller_deg = -45.0, link = "front", channel = 0, WHEEL },
+    { name = "front right", at_m = [0.20, -0.15], roller_deg = 45.0, link = "front", channel = 1, WHEEL },
+    { name = "rear left", at_m = [-0.20, 0.15], roller_deg = 45.0, link = "rear", channel = 0, WHEEL, REAR },
+    { name = "rear right", at_m = [-0.20, -0.15], roller_deg = -45.0, link = "rear", channel = 2, WHEEL, REAR },
+]
+link = [
+    { name = "front", port = "/dev/ttyS8", expect = "front drivers", channels = 2, LINK },
+    { name = "rear", port = "/dev/ttyS9", expect = "rear drivers", channels = 3, LINK },
+]
+pace = [{ name = "creep", travel_m_s = 0.25, turn_rad_s = 0.6 }]
+"#;
+
 pub(super) fn plan() -> Plan {
-    let wheel = |name: &str, x_m, y_m, roller_deg, link, channel| WheelPlan {
-        name: name.to_owned(),
-        geometry: Wheel { x_m, y_m, drive_rad: 0.0, roller_rad: rad(roller_deg), radius_m: 0.05 },
-        max_rad_s: 24.0,
-        max_rad_s2: 120.0,
-        link,
-        channel,
-        reversed: link == 1,
-        gear: if link == 1 { 2.0 } else { 1.0 },
-    };
-    let wheels = vec![
-        wheel("front left", 0.20, 0.15, -45.0, 0, 0),
-        wheel("front right", 0.20, -0.15, 45.0, 0, 1),
-        wheel("rear left", -0.20, 0.15, 45.0, 1, 0),
-        wheel("rear right", -0.20, -0.15, -45.0, 1, 2),
-    ];
-    let link = |name: &str, channels| LinkPlan {
-        name: name.to_owned(),
-        port: PathBuf::from("/dev/null"),
-        baud: 460_800,
-        valid_ms: 100,
-        expect: format!("{name} drivers"),
-        channels,
-        speed_lsb_urad_s: 2000,
-        angle_lsb_urad: 500,
-        fifo_bytes: 256,
-        latency_ms: 16.0,
-    };
-    let axis = |axis| SignedAxis { axis, inverted: false };
-    let geometry: Vec<Wheel> = wheels.iter().map(|wheel| wheel.geometry).collect();
-    Plan {
-        text: String::new(),
-        name: "hay barrow".to_owned(),
-        outline_m: [0.6, 0.8],
-        layout: Layout::new(&geometry).unwrap(),
-        wheels,
-        links: vec![link("front", 2), link("rear", 3)],
-        paces: vec![PacePlan { name: "creep".to_owned(), pace: Pace { travel_m_s: 0.25, turn_rad_s: 0.6 } }],
-        limits: Limits {
-            speed_up_m_s2: 1.0,
-            slow_down_m_s2: 1.0,
-            stop_m_s2: 1.5,
-            turn_rad_s2: 3.0,
-            grip_m_s2: 1.0,
-            smoothing_s: 0.1,
-            saturation: Saturation::Together,
-        },
-        pad: PadPlan {
-            name: String::new(),
-            id: String::new(),
-            wired: false,
-            forward: axis(PadAxis::LeftStickY),
-            left: axis(PadAxis::LeftStickX),
-            turn_left: axis(PadAxis::RightStickX),
-            response: Response { deadband: 0.1, curve: 1.0 },
-            hold: PadButton::RightTrigger2,
-            hold_on: 0.6,
-            hold_off: 0.4,
-            hold_squeeze: None,
-            ready: PadButton::Start,
-            reset: PadButton::Select,
-            stop: PadButton::East,
-            pace_up: PadButton::DPadUp,
-            pace_down: PadButton::DPadDown,
-            frame: PadButton::North,
-            zero_heading: PadButton::West,
-        },
-        room: RoomPlan { heading: HeadingSource::Wheels, lead_ms: 0.0 },
-        guard: GuardPlan {
-            stop_category: StopCategory::One,
-            pad_quiet_stream_ms: 200.0,
-            pad_quiet_change_ms: 2000.0,
-            feedback_quiet_ms: 100.0,
-            not_heard_ms: 100.0,
-            late_ms: 50.0,
-            driver_ms: None,
-            follow_share: 0.1,
-            follow_lag_s: 0.08,
-            follow_s: 0.5,
-            slowing_s: 0.2,
-            runaway_share: 0.05,
-            runaway_s: 0.3,
-            runaway_rad: 0.1,
-            skid_share: 0.1,
-            skid_s: 1.0,
-            standstill_share: 0.02,
-            standstill_s: 0.1,
-            stop_margin_s: 0.5,
-            ready_idle_s: 60.0,
-            reset_hold_s: 1.0,
-        },
-        bay: BayPlan { clear_m: None, coast_m_s2: None },
-        tick: TickPlan { rate_hz: 200.0, realtime: 0, cpu: None, lock_memory: false },
-        record: RecordPlan { dir: None, keep_gb: 1.0 },
-        console: ConsolePlan { socket: None, reset: false },
+    let text = CONFIG
+        .replace("WHEEL", "drive_deg = 0.0, radius_m = 0.05, max_rad_s = 24.0, max_rad_s2 = 120.0")
+        .replace("REAR", "reversed = true, gear = 2.0")
+        .replace("LINK", "baud = 460800, valid_ms = 100, speed_lsb_urad_s = 2000, angle_lsb_urad = 500");
+    match parse(&text, "base.toml") {
+        Ok((plan, _)) => plan,
+        Err(mistakes) => {
+            panic!("{}", mistakes.iter().map(ToString::to_string).collect::<Vec<_>>().join("\n"))
+        }
     }
 }
 

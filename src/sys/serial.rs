@@ -5,14 +5,14 @@
     reason = "poll and the calls on a tty's queues, which std lacks; serialport gives its descriptor away as a number"
 )]
 
-use std::ffi::{CStr, OsStr};
-use std::fs::File;
+use std::fs::{File, OpenOptions};
 use std::io;
-use std::mem::MaybeUninit;
 use std::os::fd::{AsRawFd, BorrowedFd, FromRawFd, IntoRawFd, OwnedFd};
-use std::os::unix::ffi::OsStrExt;
+use std::os::unix::fs::OpenOptionsExt;
 use std::path::{Path, PathBuf};
 use std::time::Duration;
+
+use super::tty::{make_raw, open_pty, set_nonblocking};
 
 /// Opens a serial port (or the slave of a pseudo-terminal) raw, for this process alone, at a baud rate that was read
 /// back. Reads and writes never wait.
@@ -26,65 +26,37 @@ pub fn open_nonblocking(path: &Path, baud: u32) -> io::Result<File> {
     if got != baud {
         return Err(io::Error::other(format!("it took {got} baud instead of {baud}")));
     }
-    let port = owned(port.into_raw_fd())?;
-    // SAFETY: the descriptor is open; the call takes a number and gives one.
-    done(unsafe { libc::fcntl(port.as_raw_fd(), libc::F_SETFL, libc::O_NONBLOCK) })?;
+    // SAFETY: `into_raw_fd` gives the descriptor away; nobody else owns it from here on.
+    let port = unsafe { OwnedFd::from_raw_fd(port.into_raw_fd()) };
+    set_nonblocking(&port)?;
     Ok(File::from(port))
 }
 
-/// A fresh pseudo-terminal, raw, so that every byte passes as it is.
+/// A fresh pseudo-terminal that outlives whoever opens it.
 #[derive(Debug)]
-pub struct Pty {
+pub struct KeptPty {
     /// The end behind the port; reads and writes never wait.
-    pub master: OwnedFd,
-    /// The port's own end. As long as it is open the port keeps its settings, whoever opens and closes it.
-    pub slave: OwnedFd,
+    pub master: File,
+    /// The port's own end. As long as it is open the port lives and keeps its settings, whoever opens and closes it.
+    pub slave: File,
     /// Where others open the port.
     pub path: PathBuf,
 }
 
-/// Opens a fresh pseudo-terminal.
+/// Opens a fresh pseudo-terminal at both ends, raw.
 ///
 /// # Errors
 /// When the system has none to give.
-pub fn open_pty() -> io::Result<Pty> {
-    let flags = libc::O_RDWR | libc::O_NOCTTY | libc::O_CLOEXEC;
-    // SAFETY: no pointers are passed.
-    let master = owned(unsafe { libc::posix_openpt(flags | libc::O_NONBLOCK) })?;
-    // SAFETY: the descriptor is open; the call takes it and nothing else.
-    done(unsafe { libc::unlockpt(master.as_raw_fd()) })?;
-    let mut name = [0_u8; 64];
-    // SAFETY: `name` is a buffer of the length that is told, one byte of it kept back as the end of the string.
-    let error = unsafe { libc::ptsname_r(master.as_raw_fd(), name.as_mut_ptr().cast(), name.len() - 1) };
-    if error != 0 {
-        return Err(io::Error::from_raw_os_error(error));
-    }
-    // SAFETY: the descriptor is open; the call takes a number and gives a descriptor.
-    let slave = owned(unsafe { libc::ioctl(master.as_raw_fd(), libc::TIOCGPTPEER, flags) })?;
-    let mut settings = MaybeUninit::<libc::termios>::uninit();
-    // SAFETY: `settings` is what the call fills, and it is read only where that went well.
-    unsafe {
-        done(libc::tcgetattr(slave.as_raw_fd(), settings.as_mut_ptr()))?;
-        let mut settings = settings.assume_init();
-        libc::cfmakeraw(&raw mut settings);
-        done(libc::tcsetattr(slave.as_raw_fd(), libc::TCSANOW, &raw const settings))?;
-    }
-    let name = CStr::from_bytes_until_nul(&name).map_err(io::Error::other)?;
-    Ok(Pty { master, slave, path: PathBuf::from(OsStr::from_bytes(name.to_bytes())) })
-}
-
-fn done(result: libc::c_int) -> io::Result<()> {
-    if result < 0 { Err(io::Error::last_os_error()) } else { Ok(()) }
-}
-
-fn owned(result: libc::c_int) -> io::Result<OwnedFd> {
-    done(result)?;
-    // SAFETY: a call that opens a descriptor has just given it; nobody else owns it.
-    Ok(unsafe { OwnedFd::from_raw_fd(result) })
+pub fn open_kept_pty() -> io::Result<KeptPty> {
+    let (master, path) = open_pty()?;
+    set_nonblocking(&master)?;
+    let slave = OpenOptions::new().read(true).write(true).custom_flags(libc::O_NOCTTY).open(&path)?;
+    make_raw(&slave)?;
+    Ok(KeptPty { master: File::from(master), slave, path })
 }
 
 /// Waits until one of the descriptors can be read (or has failed), at most `timeout_ms`. A signal ends it early.
-pub fn wait_readable<'a>(descriptors: impl IntoIterator<Item = BorrowedFd<'a>>, timeout_ms: u16) {
+pub fn wait_any<'a>(descriptors: impl IntoIterator<Item = BorrowedFd<'a>>, timeout_ms: u16) {
     let poll = |fd: BorrowedFd<'_>| libc::pollfd { fd: fd.as_raw_fd(), events: libc::POLLIN, revents: 0 };
     let mut polls: arrayvec::ArrayVec<libc::pollfd, 32> =
         descriptors.into_iter().take(32).map(poll).collect();
@@ -118,7 +90,7 @@ mod tests {
 
     use super::*;
 
-    fn is_exclusive(tty: &OwnedFd) -> bool {
+    fn is_exclusive(tty: &File) -> bool {
         let mut exclusive: libc::c_int = 0;
         // SAFETY: the descriptor is open and `exclusive` is what the call fills.
         assert_eq!(unsafe { libc::ioctl(tty.as_raw_fd(), libc::TIOCGEXCL, &raw mut exclusive) }, 0);
@@ -127,13 +99,12 @@ mod tests {
 
     #[test]
     fn a_tty_is_made_ready_for_the_next_user() {
-        let pty = open_pty().unwrap();
-        let mut master = File::from(pty.master);
+        let mut pty = open_kept_pty().unwrap();
         // SAFETY: the descriptor is open; no pointers are passed.
         assert_eq!(unsafe { libc::ioctl(pty.slave.as_raw_fd(), libc::TIOCEXCL) }, 0);
         assert!(is_exclusive(&pty.slave) && !has_unread(pty.slave.as_fd()));
-        master.write_all(b"stale").unwrap();
-        wait_readable([pty.slave.as_fd()], 10_000);
+        pty.master.write_all(b"stale").unwrap();
+        wait_any([pty.slave.as_fd()], 10_000);
         assert!(has_unread(pty.slave.as_fd()));
         make_ready(pty.slave.as_fd());
         assert!(!is_exclusive(&pty.slave) && !has_unread(pty.slave.as_fd()));
@@ -141,19 +112,18 @@ mod tests {
 
     #[test]
     fn every_byte_passes_a_pseudo_terminal_as_it_is() {
-        let pty = open_pty().unwrap();
-        let (mut master, mut slave) = (File::from(pty.master), File::from(pty.slave));
+        let KeptPty { mut master, mut slave, path } = open_kept_pty().unwrap();
         let all: Vec<u8> = (0..=u8::MAX).collect();
         let mut got = vec![0; all.len()];
         master.write_all(&all).unwrap();
         slave.read_exact(&mut got).unwrap();
         assert_eq!(got, all);
         slave.write_all(&all).unwrap();
-        wait_readable([master.as_fd()], 10_000);
+        wait_any([master.as_fd()], 10_000);
         master.read_exact(&mut got).unwrap();
         assert_eq!(got, all);
         assert_eq!(master.read(&mut got).unwrap_err().kind(), io::ErrorKind::WouldBlock);
-        assert!(open_nonblocking(&pty.path, 460_800).is_ok());
+        assert!(open_nonblocking(&path, 460_800).is_ok());
     }
 
     #[test]

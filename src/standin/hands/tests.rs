@@ -1,32 +1,10 @@
 #![expect(clippy::float_cmp, reason = "values that are set, or handed on as they are")]
 
 use super::*;
-use crate::shaping::Response;
 
-/// The defaults that the design names.
+/// The defaults.
 fn plan() -> PadPlan {
-    let straight = |axis| SignedAxis { axis, inverted: false };
-    let turned = |axis| SignedAxis { axis, inverted: true };
-    PadPlan {
-        name: String::new(),
-        id: String::new(),
-        wired: false,
-        forward: straight(PadAxis::LeftStickY),
-        left: turned(PadAxis::LeftStickX),
-        turn_left: turned(PadAxis::RightStickX),
-        response: Response { deadband: 0.1, curve: 1.0 },
-        hold: PadButton::RightTrigger2,
-        hold_on: 0.6,
-        hold_off: 0.4,
-        hold_squeeze: None,
-        ready: PadButton::Start,
-        reset: PadButton::Select,
-        stop: PadButton::East,
-        pace_up: PadButton::DPadUp,
-        pace_down: PadButton::DPadDown,
-        frame: PadButton::North,
-        zero_heading: PadButton::West,
-    }
+    crate::standin::testing::plan().pad
 }
 
 fn hands(text: &str) -> Hands {

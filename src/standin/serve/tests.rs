@@ -169,11 +169,11 @@ fn the_trace_is_on_the_clock_of_the_machine() {
 
 #[test]
 fn a_given_port_is_served_and_an_absent_one_is_an_error() {
-    let line = crate::sys::serial::open_pty().unwrap();
+    let line = crate::sys::serial::open_kept_pty().unwrap();
     let settings = ServeSettings { ports: vec![(1, line.path.clone())], ..ServeSettings::default() };
     let (served, _told) = serve(&settings);
     assert_eq!(served.ports()[1], line.path);
-    let mut host = Host { file: File::from(line.master), deframer: Deframer::new() };
+    let mut host = Host { file: line.master, deframer: Deframer::new() };
     host.say(&ToDrivers::Ask);
     let name = host.wait(|message| match message {
         FromDrivers::Identity(identity) => Some(identity.name.to_string()),
@@ -202,7 +202,7 @@ fn an_idle_base_sleeps() {
     let begin = clock::now();
     let mut turns = 0;
     while clock::now().since_s(begin) < 1.0 {
-        wait_readable(server.ports.iter().filter_map(Port::descriptor), WAIT_MS);
+        wait_any(server.ports.iter().filter_map(Port::descriptor), WAIT_MS);
         server.turn(clock::now());
         turns += 1;
     }
