@@ -27,5 +27,4 @@ pub use io::{Inputs, Outputs, Phase};
 pub use state::CoreState;
 pub use step::Core;
 
-/// The most links one base may have.
-pub const MAX_LINKS: usize = 8;
+pub use crate::config::MAX_LINKS;

@@ -178,21 +178,21 @@ pub fn ramp_ms(
     libm::ceil(seconds * 1e3 - 1e-6).clamp(1.0, f64::from(u16::MAX)) as u16
 }
 
-/// The longest ramp that a plan can need: full travel and full turn of its fastest pace at once.
+/// The longest ramp that a plan can need: that of its fastest pace.
 #[must_use]
 pub fn longest_ramp_ms(plan: &Plan) -> u16 {
-    plan.paces
-        .iter()
-        .map(|it| {
-            let twist = crate::base::Twist::new(it.pace.turn_rad_s, it.pace.travel_m_s, 0.0);
-            let wheels = plan.layout.rows().iter().zip(&plan.wheels).map(|([turn, x, y], wheel)| {
-                let speed = turn.abs() * it.pace.turn_rad_s + libm::hypot(*x, *y) * it.pace.travel_m_s;
-                speed.min(wheel.max_rad_s) / wheel.max_rad_s2
-            });
-            ramp_ms(&plan.limits, twist, wheels)
-        })
-        .max()
-        .unwrap_or(1)
+    plan.paces.iter().map(|it| pace_ramp_ms(plan, &it.pace)).max().unwrap_or(1)
+}
+
+/// The longest ramp that one pace can need: full travel and full turn at once.
+#[must_use]
+pub fn pace_ramp_ms(plan: &Plan, pace: &Pace) -> u16 {
+    let twist = crate::base::Twist::new(pace.turn_rad_s, pace.travel_m_s, 0.0);
+    let wheels = plan.layout.rows().iter().zip(&plan.wheels).map(|([turn, x, y], wheel)| {
+        let speed = turn.abs() * pace.turn_rad_s + libm::hypot(*x, *y) * pace.travel_m_s;
+        speed.min(wheel.max_rad_s) / wheel.max_rad_s2
+    });
+    ramp_ms(&plan.limits, twist, wheels)
 }
 
 /// The shaper's settings of a plan.
