@@ -356,23 +356,3 @@ fn pace_frame_and_heading_buttons_do_what_they_say() {
     world.tap(Buttons::FRAME);
     assert_eq!((world.out.view.pace, world.out.view.frame), (1, Frame::Room));
 }
-
-#[test]
-fn each_line_of_words_names_what_the_plan_calls_it() {
-    use gripline::core::words;
-    let plan = four_omni();
-    let cause = Cause::FeedbackQuiet { link: 1, age_ms: 104 };
-    assert_eq!(words::cause(&cause, &plan), "no feedback from link \"right\" for 104 ms (limit 100 ms)");
-    assert!(words::clears(&cause, &plan).contains("hold Select for 1 s"));
-    let runaway = Cause::Runaway { wheel: 2, measured_rad_s: 1.5 };
-    assert_eq!(
-        words::cause(&runaway, &plan),
-        "wheel \"rear right\" runs away: told to stand, measured 1.50 rad/s (limit 1.00 rad/s); torque taken off"
-    );
-    let mut world = World::new(four_omni()).into_tripped();
-    world.reset();
-    for event in &world.events {
-        let line = words::event(event, &plan);
-        assert!(!line.is_empty() && !line.contains('\n'), "{line}");
-    }
-}

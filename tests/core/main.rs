@@ -8,4 +8,5 @@ mod links;
 mod phases;
 mod replay;
 mod total;
+mod words;
 mod world;
