@@ -1,6 +1,7 @@
 //! One pure step a tick: phases, guards, operator intent, what is sent. Does no I/O, reads no clock, allocates
 //! nothing, locks nothing, cannot fail.
 
+pub mod budget;
 pub mod cause;
 pub mod event;
 mod guards;

@@ -75,6 +75,8 @@ impl Core {
 
     /// The guards on the wheels: under torque they trip, without it turning wheels are only told of.
     fn wheel_fault(&mut self, now: Mono, out: &mut Outputs) -> Option<Cause> {
+        let quiet_ns = self.settings.times.feedback_quiet_ns;
+        let fresh = self.state.links.iter().all(|it| it.feedback_age_ns(now).is_some_and(|age| age <= quiet_ns));
         let State { guards, wheels, sent, driver_stop, phase, .. } = &mut self.state;
         let layout = &self.shaper.settings().layout;
         let look = Look { now, settings: &self.settings, layout, wheels, sent };
@@ -92,7 +94,8 @@ impl Core {
                 if stop.is_over(&look) {
                     guards.pushed.look(&look).into_iter().for_each(|it| say(out, it));
                 }
-                stop.not_slowing(&look)
+                // What was measured before a line went quiet tells nothing about the ramp.
+                if fresh { stop.not_slowing(&look) } else { None }
             }
             Phase::Ready => {
                 guards.skid.rest();

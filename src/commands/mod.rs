@@ -1,0 +1,116 @@
+//! One file a command: its arguments (`Args`), and `run`, which does it and says how it went. What several commands
+//! need is here: the exit statuses, and the one place that prints an error.
+
+pub(crate) mod check;
+pub(crate) mod drive;
+pub(crate) mod pads;
+pub(crate) mod rehearse;
+pub(crate) mod reset;
+pub(crate) mod review;
+pub(crate) mod standin;
+pub(crate) mod status;
+pub(crate) mod stop;
+
+use std::fmt::Display;
+use std::io::Write;
+use std::process::ExitCode;
+
+/// How a command went; the exit status of the program.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[repr(u8)]
+pub(crate) enum Exit {
+    /// Done.
+    Done = 0,
+    /// Ran, and found a failure.
+    Failed = 1,
+    /// Could not run: configuration, usage.
+    CouldNotRun = 2,
+    /// Hardware, permission, or a host too late to judge by.
+    Hardware = 3,
+}
+
+impl From<Exit> for ExitCode {
+    fn from(exit: Exit) -> Self {
+        Self::from(exit as u8)
+    }
+}
+
+/// Says why something was not done, in one line on stderr, and hands the status on: `return fail(Exit::Hardware, e)`.
+/// The text says what, where and what to do, without a name before it and without a full stop after it.
+pub(crate) fn fail(exit: Exit, why: impl Display) -> Exit {
+    warn(why);
+    exit
+}
+
+/// One line on stderr about something that is not as it should be, without ending anything.
+pub(crate) fn warn(what: impl Display) {
+    // Nobody may be listening (a closed pipe): then there is nobody to tell.
+    let _ = writeln!(std::io::stderr().lock(), "gripline: {what}");
+}
+
+/// Prints to stdout. A reader that went away (`| head`) is no failure, a full disk is.
+pub(crate) fn print(text: impl Display) -> Exit {
+    let mut out = std::io::stdout().lock();
+    match write!(out, "{text}").and_then(|()| out.flush()) {
+        Ok(()) => Exit::Done,
+        Err(e) if e.kind() == std::io::ErrorKind::BrokenPipe => Exit::Done,
+        Err(e) => fail(Exit::Hardware, format_args!("cannot write to the standard output: {e}")),
+    }
+}
+
+/// Help and version as asked; wrong arguments as one line.
+pub(crate) fn usage(error: &clap::Error) -> Exit {
+    if !error.use_stderr() {
+        return print(error.render());
+    }
+    let text = error.render().to_string();
+    // clap's message is its first paragraph, sometimes over several lines; usage and hints follow after a blank one.
+    let first: Vec<&str> = text.lines().map(str::trim).take_while(|l| !l.is_empty()).collect();
+    let what = first.join(" ");
+    let what = what.strip_prefix("error: ").unwrap_or(&what);
+    fail(
+        Exit::CouldNotRun,
+        format_args!("{what}; gripline --help and gripline COMMAND --help say what there is"),
+    )
+}
+
+/// Reads a configuration; what is wrong with it is told, and is the status to end with.
+pub(crate) fn read_plan(path: &std::path::Path) -> Result<gripline::config::Plan, Exit> {
+    match gripline::config::load(path) {
+        Ok((plan, warnings)) => {
+            warnings.iter().for_each(|it| warn(format_args!("{it}")));
+            Ok(plan)
+        }
+        Err(error) => Err(fail(Exit::CouldNotRun, error)),
+    }
+}
+
+/// The console's socket: of a given configuration, else the only one there is in the runtime folders.
+pub(crate) fn find_socket(config: Option<&std::path::Path>) -> Result<std::path::PathBuf, Exit> {
+    if let Some(path) = config {
+        return read_plan(path).map(|plan| gripline::daemon::socket_path(&plan));
+    }
+    let mut found: Vec<std::path::PathBuf> = Vec::new();
+    let runtime = std::env::var_os("XDG_RUNTIME_DIR").map(std::path::PathBuf::from);
+    for dir in runtime.into_iter().chain(["/run/gripline".into(), std::env::temp_dir()]) {
+        let entries = std::fs::read_dir(dir).into_iter().flatten().flatten();
+        found.extend(entries.map(|it| it.path()).filter(|it| {
+            it.file_name()
+                .and_then(|it| it.to_str())
+                .is_some_and(|it| it.starts_with("gripline-") && it.ends_with(".sock"))
+        }));
+    }
+    found.sort();
+    found.dedup();
+    match found.as_slice() {
+        [one] => Ok(one.clone()),
+        [] => Err(fail(
+            Exit::Failed,
+            "no drive is running here; start `gripline drive CONFIG`, or give its CONFIG",
+        )),
+        _ => Err(fail(
+            Exit::CouldNotRun,
+            "several drives are running here; give the CONFIG of the one that is meant",
+        )),
+    }
+}
