@@ -16,11 +16,11 @@ use gripline::wire::{
 const STEP_US: u64 = 250;
 
 pub(crate) fn four_mecanum() -> Plan {
-    plan(include_str!("../../config/four-mecanum.toml"))
+    plan(include_str!("tray.toml"))
 }
 
 pub(crate) fn four_omni() -> Plan {
-    plan(include_str!("../../config/four-omni.toml"))
+    plan(include_str!("crate.toml"))
 }
 
 pub(crate) fn plan(text: &str) -> Plan {
@@ -32,7 +32,7 @@ pub(crate) fn plan(text: &str) -> Plan {
 
 /// The four mecanum wheels with more lines at the end of the configuration.
 pub(crate) fn mecanum_with(more: &str) -> Plan {
-    plan(&format!("{}\n{more}", include_str!("../../config/four-mecanum.toml")))
+    plan(&format!("{}\n{more}", include_str!("tray.toml")))
 }
 
 /// One link's drivers and their wheels.
@@ -203,7 +203,7 @@ impl Board {
 
 /// Four mecanum wheels with a validity that runs out late, so that the host's guards are seen alone.
 pub(crate) fn patient_drivers() -> Plan {
-    plan(&include_str!("../../config/four-mecanum.toml").replace("valid_ms = 100", "valid_ms = 900"))
+    plan(&include_str!("tray.toml").replace("valid_ms = 100", "valid_ms = 900"))
 }
 
 /// All of it.

@@ -76,7 +76,8 @@ impl Core {
     /// The guards on the wheels: under torque they trip, without it turning wheels are only told of.
     fn wheel_fault(&mut self, now: Mono, out: &mut Outputs) -> Option<Cause> {
         let quiet_ns = self.settings.times.feedback_quiet_ns;
-        let fresh = self.state.links.iter().all(|it| it.feedback_age_ns(now).is_some_and(|age| age <= quiet_ns));
+        let fresh =
+            self.state.links.iter().all(|it| it.feedback_age_ns(now).is_some_and(|age| age <= quiet_ns));
         let State { guards, wheels, sent, driver_stop, phase, .. } = &mut self.state;
         let layout = &self.shaper.settings().layout;
         let look = Look { now, settings: &self.settings, layout, wheels, sent };
