@@ -111,12 +111,16 @@ fn ready_left_alone_parks_and_one_that_is_touched_does_not() {
     assert_eq!(world.phase(), Phase::Parked);
     let mut world = World::new(plan()).into_ready();
     for _ in 0..5 {
-        world.run_s(0.7);
-        world.sticks(0.3, 0.0, 0.0);
-        world.tick();
-        world.sticks(0.0, 0.0, 0.0);
+        world.run_s(0.9);
+        world.tap(Buttons::PACE_UP);
     }
     assert_eq!(world.phase(), Phase::Ready);
+    // A hold control that is stuck does not keep it awake.
+    let mut world = World::new(plan()).into_ready();
+    world.sticks(0.5, 0.0, 0.0);
+    world.hold(1.0);
+    world.run_s(1.01);
+    assert_eq!(world.phase(), Phase::Parked);
 }
 
 #[test]

@@ -53,6 +53,14 @@ fn a_trigger_between_its_thresholds_neither_presses_nor_releases() {
     world.pad.hold_least = 0.39;
     world.tick();
     assert_eq!(world.phase(), Phase::Stopping, "a release between two ticks is not lost");
+    // Nor one after which it is pressed home again: that press is spent.
+    let mut world = World::new(four_mecanum()).at_speed(1.0, 0.0, 0.0);
+    world.pad.hold_least = 0.0;
+    world.tick();
+    assert_eq!(world.phase(), Phase::Stopping);
+    world.sticks(0.0, 0.0, 0.0);
+    world.run_s(2.0);
+    assert_eq!(world.phase(), Phase::Ready);
 }
 
 #[test]
