@@ -17,12 +17,33 @@ struct CommandLine {
 }
 
 #[derive(Subcommand)]
-enum Command {}
+enum Command {
+    Rehearse(commands::rehearse::Args),
+    Check(commands::check::Args),
+    Pads(commands::pads::Args),
+    Drive(commands::drive::Args),
+    Status(commands::status::Args),
+    Stop(commands::stop::Args),
+    Reset(commands::reset::Args),
+    Standin(commands::standin::Args),
+    Review(commands::review::Args),
+}
 
 fn main() -> ExitCode {
     let line = match CommandLine::try_parse() {
         Ok(line) => line,
         Err(error) => return commands::usage(&error).into(),
     };
-    match line.command {}
+    let exit = match line.command {
+        Command::Rehearse(args) => commands::rehearse::run(args),
+        Command::Check(args) => commands::check::run(args),
+        Command::Pads(args) => commands::pads::run(args),
+        Command::Drive(args) => commands::drive::run(args),
+        Command::Status(args) => commands::status::run(args),
+        Command::Stop(args) => commands::stop::run(args),
+        Command::Reset(args) => commands::reset::run(args),
+        Command::Standin(args) => commands::standin::run(args),
+        Command::Review(args) => commands::review::run(args),
+    };
+    exit.into()
 }

@@ -1,9 +1,14 @@
 //! The base as geometry: wheels, layout matrix, reach, skid, pose, odometry. Nothing here knows of time's passing or
 //! of people. Frames: base frame x forward, y left, z up, angles anticlockwise.
 
+pub mod analysis;
 pub mod layout;
+pub mod odometry;
+pub mod pose;
+pub mod reach;
 
 pub use layout::{Layout, LayoutProblem, Wheel};
+pub use odometry::Odometry;
 
 use arrayvec::ArrayVec;
 use serde::{Deserialize, Serialize};

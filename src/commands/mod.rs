@@ -1,6 +1,16 @@
 //! One file a command: its arguments (`Args`), and `run`, which does it and says how it went. What several commands
 //! need is here: the exit statuses, and the one place that prints an error.
 
+pub(crate) mod check;
+pub(crate) mod drive;
+pub(crate) mod pads;
+pub(crate) mod rehearse;
+pub(crate) mod reset;
+pub(crate) mod review;
+pub(crate) mod standin;
+pub(crate) mod status;
+pub(crate) mod stop;
+
 use std::fmt::Display;
 use std::io::Write;
 use std::process::ExitCode;
@@ -62,4 +72,45 @@ pub(crate) fn usage(error: &clap::Error) -> Exit {
         Exit::CouldNotRun,
         format_args!("{what}; gripline --help and gripline COMMAND --help say what there is"),
     )
+}
+
+/// Reads a configuration; what is wrong with it is told, and is the status to end with.
+pub(crate) fn read_plan(path: &std::path::Path) -> Result<gripline::config::Plan, Exit> {
+    match gripline::config::load(path) {
+        Ok((plan, warnings)) => {
+            warnings.iter().for_each(|it| warn(format_args!("{it}")));
+            Ok(plan)
+        }
+        Err(error) => Err(fail(Exit::CouldNotRun, error)),
+    }
+}
+
+/// The console's socket: of a given configuration, else the only one there is in the runtime folders.
+pub(crate) fn find_socket(config: Option<&std::path::Path>) -> Result<std::path::PathBuf, Exit> {
+    if let Some(path) = config {
+        return read_plan(path).map(|plan| gripline::daemon::socket_path(&plan));
+    }
+    let mut found: Vec<std::path::PathBuf> = Vec::new();
+    let runtime = std::env::var_os("XDG_RUNTIME_DIR").map(std::path::PathBuf::from);
+    for dir in runtime.into_iter().chain(["/run/gripline".into(), std::env::temp_dir()]) {
+        let entries = std::fs::read_dir(dir).into_iter().flatten().flatten();
+        found.extend(entries.map(|it| it.path()).filter(|it| {
+            it.file_name()
+                .and_then(|it| it.to_str())
+                .is_some_and(|it| it.starts_with("gripline-") && it.ends_with(".sock"))
+        }));
+    }
+    found.sort();
+    found.dedup();
+    match found.as_slice() {
+        [one] => Ok(one.clone()),
+        [] => Err(fail(
+            Exit::Failed,
+            "no drive is running here; start `gripline drive CONFIG`, or give its CONFIG",
+        )),
+        _ => Err(fail(
+            Exit::CouldNotRun,
+            "several drives are running here; give the CONFIG of the one that is meant",
+        )),
+    }
 }

@@ -1,5 +1,16 @@
 //! TOML to a checked [`Plan`], with the line and the reason for each refusal.
 
+pub mod checks;
+pub mod keys;
+mod mistake;
+mod parse;
 pub mod plan;
+mod reader;
 
+pub use checks::link_load;
+pub use mistake::Mistake;
+pub use parse::{ConfigError, load, parse};
 pub use plan::*;
+
+/// The configuration that `rehearse` uses unless another is given.
+pub const EXAMPLE: &str = include_str!("../../config/four-mecanum.toml");

@@ -1,9 +1,14 @@
 //! From sticks to a twist that the base can make: response, grip, saturation, rate, smoothing, exact room-frame
 //! steps. One call a tick; knows nothing of phases or frames on a line.
 
+pub mod average;
+pub mod region;
 pub mod shaper;
+pub mod stick;
 
-pub use shaper::{Goal, Shaped, Shaper, ShaperSettings};
+pub use average::MAX_SAMPLES;
+pub use shaper::{Goal, Shaped, Shaper, ShaperSettings, ShaperState, demand};
+pub use stick::{centred, stick_response};
 
 use serde::{Deserialize, Serialize};
 

@@ -2,3 +2,7 @@
 //! it; the pure parts never do.
 
 pub mod clock;
+pub mod evdev;
+pub mod sched;
+pub mod serial;
+pub mod tty;

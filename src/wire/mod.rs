@@ -6,6 +6,16 @@
 //! on the line:  COBS of that | 0x00
 //! ```
 
+pub mod deframe;
+pub mod driver;
+pub mod frame;
+
+pub use deframe::Deframer;
+pub use frame::{
+    WireError, emit_from_drivers, emit_to_drivers, kind, parse_from_drivers, parse_to_drivers, stop_on_line,
+    stop_plain,
+};
+
 use arrayvec::{ArrayString, ArrayVec};
 use serde::{Deserialize, Serialize};
 
@@ -166,4 +176,13 @@ pub enum FromDrivers {
     Identity(Identity),
     /// State of the drivers.
     Feedback(Feedback),
+}
+
+/// Which way a frame goes.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum Direction {
+    /// From the host.
+    ToDrivers,
+    /// To the host.
+    FromDrivers,
 }

@@ -1,0 +1,147 @@
+//! Gathers what a tick sees, without waiting and without allocating.
+
+use std::sync::atomic::{AtomicBool, Ordering};
+
+use crossbeam_channel::Receiver;
+
+use crate::core::io::{ConsoleInput, Heard, Inputs, LinkInput, PadInput};
+use crate::link::{Line, LinkNews, StopLine};
+use crate::pad::PadFeed;
+use crate::standin::hands::Hands;
+use crate::units::Mono;
+use crate::wire::{FromDrivers, flag};
+
+/// Where the pad's state comes from.
+pub(super) enum PadSource {
+    /// A real gamepad.
+    Feed(PadFeed),
+    /// A script. It plays once every driver has said that it is simulated, or on stands at once.
+    Hands(Box<ScriptedHands>),
+}
+
+/// A script and when it may play.
+pub(super) struct ScriptedHands {
+    pub(super) hands: Hands,
+    pub(super) on_stands: bool,
+    pub(super) began: Option<Mono>,
+}
+
+/// What other threads ask of the tick.
+#[derive(Debug, Default)]
+pub(super) struct Asked {
+    pub(super) quit: AtomicBool,
+    pub(super) stop: AtomicBool,
+    pub(super) reset: AtomicBool,
+}
+
+/// Collects inputs tick by tick.
+pub(super) struct Gather {
+    pub(super) inputs: Inputs,
+    /// What each link's drivers say of themselves: simulated or not, `None` before they have.
+    simulated: arrayvec::ArrayVec<Option<bool>, { crate::core::MAX_LINKS }>,
+    frame_bytes: arrayvec::ArrayVec<usize, { crate::core::MAX_LINKS }>,
+}
+
+impl Gather {
+    pub(super) fn new(channels: impl Iterator<Item = u8>) -> Self {
+        let mut inputs = Inputs::default();
+        let mut simulated = arrayvec::ArrayVec::new();
+        let mut frame_bytes = arrayvec::ArrayVec::new();
+        for channels in channels.take(crate::core::MAX_LINKS) {
+            inputs.links.push(LinkInput::default());
+            simulated.push(None);
+            frame_bytes.push(2 + 6 + 2 * usize::from(channels) + 4 + 2);
+        }
+        Self { inputs, simulated, frame_bytes }
+    }
+
+    /// Everything that has come since the last tick.
+    pub(super) fn gather(
+        &mut self,
+        (now, due): (Mono, Mono),
+        pad: &mut PadSource,
+        lines: &mut [Line],
+        news: &Receiver<LinkNews>,
+        stop: &StopLine,
+        asked: &Asked,
+    ) {
+        self.inputs.now = now;
+        self.inputs.due = due;
+        for link in &mut self.inputs.links {
+            link.identity = None;
+            link.feedback = None;
+            link.status_seen = 0;
+        }
+        while let Ok(it) = news.try_recv() {
+            self.take(it, lines);
+        }
+        for ((link, line), bytes) in self.inputs.links.iter_mut().zip(lines.iter()).zip(&self.frame_bytes) {
+            link.unsent =
+                line.unsent_bytes().map(|it| u16::try_from(it.div_ceil((*bytes).max(1))).unwrap_or(u16::MAX));
+        }
+        self.inputs.console = ConsoleInput {
+            stop: asked.stop.swap(false, Ordering::Relaxed),
+            reset: asked.reset.swap(false, Ordering::Relaxed),
+        };
+        self.inputs.quit |= asked.quit.load(Ordering::Relaxed);
+        self.inputs.stop_line = stop.standing();
+        self.inputs.pad = match pad {
+            PadSource::Feed(feed) => feed.poll(),
+            PadSource::Hands(script) => self.play(script, now),
+        };
+    }
+
+    fn take(&mut self, news: LinkNews, lines: &mut [Line]) {
+        let (index, link) = match &news {
+            LinkNews::Opened { link, .. }
+            | LinkNews::Closed { link }
+            | LinkNews::Heard { link, .. }
+            | LinkNews::Dropped { link, .. } => {
+                (usize::from(*link), self.inputs.links.get_mut(usize::from(*link)))
+            }
+        };
+        let Some(link) = link else { return };
+        match news {
+            LinkNews::Opened { openings, .. } => {
+                *link = LinkInput { open: true, openings, dropped: link.dropped, ..LinkInput::default() };
+                if let Some(line) = lines.get_mut(index) {
+                    line.restart();
+                }
+            }
+            LinkNews::Closed { .. } => {
+                *link = LinkInput { openings: link.openings, dropped: link.dropped, ..LinkInput::default() };
+                if let Some(it) = self.simulated.get_mut(index) {
+                    *it = None;
+                }
+            }
+            LinkNews::Heard { at, message, .. } => match message {
+                FromDrivers::Identity(identity) => {
+                    if let Some(it) = self.simulated.get_mut(index) {
+                        *it = Some(identity.flags & flag::SIMULATED != 0);
+                    }
+                    link.identity = Some(identity);
+                }
+                FromDrivers::Feedback(feedback) => {
+                    link.status_seen |= feedback.status;
+                    link.feedback = Some(Heard { at, feedback });
+                }
+            },
+            LinkNews::Dropped { count, .. } => link.dropped = count,
+        }
+    }
+
+    /// A script plays only on drivers that are known not to move anything, or on stands.
+    fn play(&self, script: &mut ScriptedHands, now: Mono) -> PadInput {
+        let may = script.on_stands || self.simulated.iter().all(|it| *it == Some(true));
+        if !may && script.began.is_none() {
+            return PadInput::default();
+        }
+        let began = *script.began.get_or_insert(now);
+        script.hands.at(now.since_s(began), now)
+    }
+
+    /// A link whose drivers are real although a script is to be played on simulated ones.
+    pub(super) fn real_drivers(&self) -> Option<usize> {
+        self.simulated.iter().position(|it| *it == Some(false))
+    }
+}
