@@ -1,6 +1,6 @@
 //! Configurations: the shipped ones are sound, the reference is the parser's own table, and every mistake is told where
 //! it stands.
-#![expect(clippy::unwrap_used, clippy::panic, reason = "a test says what went wrong by stopping")]
+#![expect(clippy::unwrap_used, reason = "a test says what went wrong by stopping")]
 
 use gripline::config::keys::{KEYS, Kind, reference};
 use gripline::config::{EXAMPLE, parse};

@@ -1,5 +1,4 @@
 //! The laws of shaping, over random layouts, limits and histories of sticks, paces, frames and headings.
-#![expect(clippy::unwrap_used, clippy::expect_used, reason = "a test says what went wrong by stopping")]
 
 use gripline::base::{Layout, PerWheel, Pose, Twist, Wheel, pose};
 use gripline::shaping::{
@@ -294,7 +293,7 @@ proptest! {
 
     #[test]
     fn a_straight_line_in_the_room_stays_straight_while_spinning(
-        machine in machine(), direction in 0.0..6.28_f64, turn in -1.0..1.0_f64,
+        machine in machine(), direction in 0.0..core::f64::consts::TAU, turn in -1.0..1.0_f64,
     ) {
         let mut shaper = Shaper::new(machine.settings.clone());
         shaper.request_frame(Frame::Room);

@@ -83,7 +83,8 @@ fn polygon(wheels: &[([f64; 2], f64)]) -> Vec<[f64; 2]> {
     let mut distinct: Vec<[f64; 2]> = Vec::with_capacity(corners.len());
     for p in corners {
         let near = |q: &[f64; 2]| libm::hypot(p[0] - q[0], p[1] - q[1]) < 1e-12 * size;
-        if !distinct.last().is_some_and(near) && !(distinct.len() > 1 && distinct.first().is_some_and(near)) {
+        let closes = distinct.len() > 1 && distinct.first().is_some_and(near);
+        if !closes && !distinct.last().is_some_and(near) {
             distinct.push(p);
         }
     }

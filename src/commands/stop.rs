@@ -77,9 +77,12 @@ fn straight(args: &Args, plan: &Plan) -> Exit {
                 Outcome::NoPort
             }
         };
-        missed += u32::from(
-            !matches!(outcome, Outcome::Latched) && !(args.last_act && matches!(outcome, Outcome::Absent)),
-        );
+        let fine = match outcome {
+            Outcome::Latched => true,
+            Outcome::Absent => args.last_act,
+            Outcome::Unheard | Outcome::NoPort => false,
+        };
+        missed += u32::from(!fine);
         if !args.json {
             let words = match outcome {
                 Outcome::Latched => "stopped and latched",

@@ -57,6 +57,10 @@ pub enum Event {
     LinkDiffers {
         /// The link.
         link: u8,
+        /// In what.
+        field: IdentityField,
+        /// What it says.
+        found: Found,
     },
     /// Pad there, or not any more.
     Pad {
@@ -132,6 +136,8 @@ pub enum Wait {
         link: u8,
         /// In what.
         field: IdentityField,
+        /// What it says.
+        found: Found,
     },
     /// No fresh feedback from a link.
     NoFeedback {
@@ -167,6 +173,15 @@ pub enum Wait {
     NotStanding,
     /// The stop button is down.
     StopDown,
+}
+
+/// What an Identity says where it differs.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum Found {
+    /// A number.
+    Number(u32),
+    /// A name.
+    Name(arrayvec::ArrayString<24>),
 }
 
 /// In what an Identity differs from the plan.

@@ -3,7 +3,7 @@
 use arrayvec::ArrayVec;
 use serde::{Deserialize, Serialize};
 
-use super::event::{IdentityField, Wait};
+use super::event::{Found, IdentityField, Wait};
 use super::io::LinkInput;
 use super::settings::{LinkSettings, Settings};
 use crate::units::Mono;
@@ -18,7 +18,7 @@ pub(super) enum Known {
     /// It is what the plan says.
     AsPlanned(Identity),
     /// It is something else.
-    Differs(IdentityField),
+    Differs(IdentityField, Found),
 }
 
 /// State of one link.
@@ -52,8 +52,8 @@ pub(super) struct Link {
 /// What hearing from a link brought up.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub(super) struct News {
-    /// It has told who it is, for the first time in this opening: whether as planned.
-    pub(super) told: Option<bool>,
+    /// It has told who it is, for the first time in this opening: in what it differs from the plan, if it does.
+    pub(super) told: Option<Option<(IdentityField, Found)>>,
     /// It started anew in an opening in which it was known.
     pub(super) restarted: bool,
     /// It became somebody else in an opening in which it was known.
@@ -102,13 +102,13 @@ impl Link {
 
     fn identify(&mut self, identity: &Identity, settings: &Settings, own: &LinkSettings, news: &mut News) {
         let known = match difference(identity, settings, own) {
-            Some(field) => Known::Differs(field),
+            Some((field, found)) => Known::Differs(field, found),
             None => Known::AsPlanned(identity.clone()),
         };
         match &self.known {
-            Known::Nothing => news.told = Some(matches!(known, Known::AsPlanned(_))),
+            Known::Nothing => news.told = Some(difference(identity, settings, own)),
             Known::AsPlanned(before) if before.boot != identity.boot => news.restarted = true,
-            Known::AsPlanned(_) | Known::Differs(_) => news.changed = known != self.known,
+            Known::AsPlanned(_) | Known::Differs(..) => news.changed = known != self.known,
         }
         self.known = known;
     }
@@ -239,7 +239,9 @@ impl Link {
         }
         match &self.known {
             Known::Nothing => return Some(Wait::NoIdentity { link: index }),
-            Known::Differs(field) => return Some(Wait::IdentityDiffers { link: index, field: *field }),
+            Known::Differs(field, found) => {
+                return Some(Wait::IdentityDiffers { link: index, field: *field, found: *found });
+            }
             Known::AsPlanned(_) => {}
         }
         if self.feedback_age_ns(now).is_none_or(|age| age > quiet_ns) {
@@ -253,18 +255,28 @@ impl Link {
     }
 }
 
-/// The first thing in which an Identity is not what the plan needs.
-fn difference(identity: &Identity, settings: &Settings, own: &LinkSettings) -> Option<IdentityField> {
+/// The first thing in which an Identity is not what the plan needs, and what it says there.
+fn difference(
+    identity: &Identity,
+    settings: &Settings,
+    own: &LinkSettings,
+) -> Option<(IdentityField, Found)> {
+    let it = identity;
+    let number = |value| Found::Number(value);
     let checks = [
-        (identity.version == 1, IdentityField::Version),
-        (identity.name == own.expect, IdentityField::Name),
-        (identity.channels == own.channels, IdentityField::Channels),
-        (identity.speed_lsb_urad_s == own.speed_lsb_urad_s, IdentityField::SpeedLsb),
-        (identity.angle_lsb_urad == own.angle_lsb_urad, IdentityField::AngleLsb),
-        (identity.silence_ms >= own.valid_ms, IdentityField::Silence),
-        (identity.ramp_max_ms >= settings.longest_ramp_ms, IdentityField::RampMax),
+        (it.version == 1, IdentityField::Version, number(u32::from(it.version))),
+        (it.name == own.expect, IdentityField::Name, Found::Name(it.name)),
+        (it.channels == own.channels, IdentityField::Channels, number(u32::from(it.channels))),
+        (it.speed_lsb_urad_s == own.speed_lsb_urad_s, IdentityField::SpeedLsb, number(it.speed_lsb_urad_s)),
+        (it.angle_lsb_urad == own.angle_lsb_urad, IdentityField::AngleLsb, number(it.angle_lsb_urad)),
+        (it.silence_ms >= own.valid_ms, IdentityField::Silence, number(u32::from(it.silence_ms))),
+        (
+            it.ramp_max_ms >= settings.longest_ramp_ms,
+            IdentityField::RampMax,
+            number(u32::from(it.ramp_max_ms)),
+        ),
     ];
-    checks.into_iter().find(|(fits, _)| !fits).map(|(_, field)| field)
+    checks.into_iter().find(|(fits, ..)| !fits).map(|(_, field, found)| (field, found))
 }
 
 /// Whether any of the links' drivers has a yaw rate, for a plan that wants one.

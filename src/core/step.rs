@@ -13,7 +13,7 @@ use super::link::{Link, News, any_yaw_rate};
 use super::phase::Happening;
 use super::settings::{Settings, ramp_ms, shaper_settings};
 use super::wheels::{self, PerLink, Sent, Wheels};
-use super::{Cause, cause::DriverTrouble, cause::StopBy, event::IdentityField};
+use super::{Cause, cause::DriverTrouble, cause::StopBy, event::Found, event::IdentityField};
 use crate::base::Twist;
 use crate::config::Plan;
 use crate::shaping::{self, Frame, Goal, Shaper, ShaperState};
@@ -60,7 +60,7 @@ struct State {
     reset_since: Option<Mono>,
     /// Clear has been on its way since then.
     clearing: Option<Mono>,
-    /// The number of the last pull of the stop line that a reset has answered.
+    /// The number of the last pull of the stop line that was seen while tripped: a reset answers it.
     answered_pull: u32,
     scaled: bool,
     gyro_used: bool,
@@ -150,8 +150,8 @@ impl Core {
             let input = inputs.links.get(usize::from(index)).unwrap_or(&nothing);
             let it = link.hear(input, &self.settings, own);
             match it.told {
-                Some(true) => say(out, Event::LinkAnswers { link: index }),
-                Some(false) => say(out, Event::LinkDiffers { link: index }),
+                Some(None) => say(out, Event::LinkAnswers { link: index }),
+                Some(Some((field, found))) => say(out, Event::LinkDiffers { link: index, field, found }),
                 None => {}
             }
             if it.refused > 0 {
@@ -489,6 +489,14 @@ impl Core {
             self.clear(since, inputs, out);
             return;
         }
+        if let Some(pull) = inputs.stop_line
+            && pull.number != self.state.answered_pull
+        {
+            // A pull that is new in this tick is seen before any reset is taken.
+            self.state.answered_pull = pull.number;
+            self.state.reset_since = None;
+            return;
+        }
         let pad = &inputs.pad;
         if pad.present && pad.pressed.has(Buttons::READY) {
             say(out, Event::Refused { request: Request::Ready, wait: Wait::WrongPhase });
@@ -533,7 +541,6 @@ impl Core {
             self.state.driver_stop = None;
             self.state.sent.rest();
             if let Some(pull) = inputs.stop_line {
-                self.state.answered_pull = pull.number;
                 out.release_stop_line = Some(pull.number);
             }
             self.go(Happening::Cleared, out);
@@ -570,7 +577,11 @@ impl Core {
             return link;
         }
         if self.settings.gyro && !any_yaw_rate(self.state.links.iter()) {
-            return Some(Wait::IdentityDiffers { link: 0, field: IdentityField::YawRate });
+            return Some(Wait::IdentityDiffers {
+                link: 0,
+                field: IdentityField::YawRate,
+                found: Found::Number(0),
+            });
         }
         if inputs.pad.down.has(Buttons::STOP) {
             return Some(Wait::StopDown);

@@ -3,9 +3,10 @@
 
 use super::Cause;
 use super::cause::{DriverTrouble, StopBy};
-use super::event::{Event, IdentityField, Request, Wait};
+use super::event::{Event, Found, IdentityField, Request, Wait};
 use super::io::{Phase, Puller};
-use crate::config::Plan;
+use super::settings::longest_ramp_ms;
+use crate::config::{LinkPlan, Plan};
 use crate::shaping::Frame;
 use crate::wire::status;
 
@@ -212,6 +213,34 @@ pub fn clears(cause: &Cause, plan: &Plan) -> String {
     format!("{first}{hold}")
 }
 
+/// In what a link is not as configured: both values.
+fn differs(index: u8, field: IdentityField, found: Found, plan: &Plan) -> String {
+    let own = plan.links.get(usize::from(index));
+    let number = |of: fn(&LinkPlan) -> u32| own.map_or(0, of).to_string();
+    let (what, wanted) = match field {
+        IdentityField::Version => ("the version of the line's format", "1".into()),
+        IdentityField::Name => {
+            ("its name (`expect`)", own.map_or_else(String::new, |it| format!("\"{}\"", it.expect)))
+        }
+        IdentityField::Channels => ("`channels`", number(|it| u32::from(it.channels))),
+        IdentityField::SpeedLsb => ("`speed_lsb_urad_s`", number(|it| it.speed_lsb_urad_s)),
+        IdentityField::AngleLsb => ("`angle_lsb_urad`", number(|it| it.angle_lsb_urad)),
+        IdentityField::Silence => {
+            ("the longest `valid_ms`", format!("at least {}", number(|it| u32::from(it.valid_ms))))
+        }
+        IdentityField::RampMax => ("the longest ramp in ms", format!("at least {}", longest_ramp_ms(plan))),
+        IdentityField::YawRate => ("the yaw rate that `heading = \"gyro\"` needs", "1".into()),
+    };
+    let found = match found {
+        Found::Number(number) => number.to_string(),
+        Found::Name(name) => format!("\"{name}\""),
+    };
+    format!(
+        "{} is not as configured in {what}: the drivers say {found}, the configuration wants {wanted}",
+        link(plan, index)
+    )
+}
+
 /// What a request waits for.
 #[must_use]
 pub fn wait(wait: &Wait, plan: &Plan) -> String {
@@ -225,19 +254,7 @@ pub fn wait(wait: &Wait, plan: &Plan) -> String {
         Wait::NoIdentity { link: it } => {
             format!("{} has not told who it is; see to the drivers' power and the baud rate", link(plan, *it))
         }
-        Wait::IdentityDiffers { link: it, field } => {
-            let field = match field {
-                IdentityField::Version => "the version of the line's format",
-                IdentityField::Name => "its name (`expect`)",
-                IdentityField::Channels => "the number of `channels`",
-                IdentityField::SpeedLsb => "`speed_lsb_urad_s`",
-                IdentityField::AngleLsb => "`angle_lsb_urad`",
-                IdentityField::Silence => "`valid_ms`, which is longer than the drivers take",
-                IdentityField::RampMax => "the longest ramp, which is shorter than the base needs",
-                IdentityField::YawRate => "the yaw rate, which `heading = \"gyro\"` needs",
-            };
-            format!("{} is not as configured in {field}", link(plan, *it))
-        }
+        Wait::IdentityDiffers { link: it, field, found } => differs(*it, *field, *found, plan),
         Wait::NoFeedback { link: it } => format!("no fresh feedback from {}", link(plan, *it)),
         Wait::Latched { link: it } => format!("{} is latched; reset first", link(plan, *it)),
         Wait::Fault { link: it, status } => format!("{} reports {}", link(plan, *it), bits(*status)),
@@ -288,7 +305,7 @@ pub fn event(event: &Event, plan: &Plan) -> String {
             format!("{} turns without torque: the base is pushed", wheel(plan, *it))
         }
         Event::LinkAnswers { link: it } => format!("{} answers as configured", link(plan, *it)),
-        Event::LinkDiffers { link: it } => format!("{} answers, but not as configured", link(plan, *it)),
+        Event::LinkDiffers { link: it, field, found } => differs(*it, *field, *found, plan),
         Event::Pad { present: true } => "gamepad there".into(),
         Event::Pad { present: false } => "gamepad gone".into(),
         Event::Scaled { link: it } => {

@@ -128,8 +128,12 @@ impl<F: Fn(Puller)> Thread<F> {
             // those would hide where an analogue trigger really is.
             EventType::ButtonPressed(..) | EventType::ButtonReleased(..) => {}
             EventType::Disconnected => self.lose(),
-            // Others, among them kinds that later versions may add, change no value.
-            _ => {}
+            // These, and kinds that later versions may add, change no value.
+            EventType::ButtonRepeated(..)
+            | EventType::Connected
+            | EventType::Dropped
+            | EventType::ForceFeedbackEffectCompleted
+            | _ => {}
         }
     }
 

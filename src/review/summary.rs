@@ -141,15 +141,14 @@ impl<'a> Reading<'a> {
     }
 
     fn event(&mut self, event: &Event) {
-        match event {
-            Event::PadQuiet { .. } => {
-                if let Some(stop) = self.summary.stops.last_mut() {
-                    stop.code = "pad-quiet".into();
-                    stop.words = words::event(event, self.plan);
-                }
-            }
-            Event::FramesRefused { count, .. } => self.summary.frames_refused += u64::from(*count),
-            _ => {}
+        if let Event::PadQuiet { .. } = event
+            && let Some(stop) = self.summary.stops.last_mut()
+        {
+            stop.code = "pad-quiet".into();
+            stop.words = words::event(event, self.plan);
+        }
+        if let Event::FramesRefused { count, .. } = event {
+            self.summary.frames_refused += u64::from(*count);
         }
     }
 
