@@ -9,6 +9,7 @@
 //! no safe wrapper and may be used by the shell alone.
 
 pub mod base;
+pub mod check;
 pub mod config;
 pub mod core;
 pub mod daemon;

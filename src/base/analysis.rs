@@ -84,7 +84,8 @@ pub fn analyse(wheels: &[Wheel]) -> Analysis {
 /// A twist that turns no wheel, in words: the wheels can neither make nor hold it.
 fn impossible([turn, x, y]: [f64; 3], characteristic_m: f64) -> String {
     if turn.abs() * characteristic_m > 1e-6 {
-        let (centre_x, centre_y) = (-y / turn, x / turn);
+        // To the millimetre that is shown; adding zero takes the sign off a zero.
+        let [centre_x, centre_y] = [-y / turn, x / turn].map(|it| libm::round(it * 1e3) * 1e-3 + 0.0);
         format!(
             "turning about the point ({centre_x:.3}, {centre_y:.3}) m turns no wheel, so the wheels can neither make nor \
              hold that motion; turn or move at least one wheel so that its roller axle does not pass over that point"

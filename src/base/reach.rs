@@ -56,37 +56,30 @@ impl Reach {
     }
 }
 
-/// Cuts the strip of each wheel out of a square that is larger than all of them (Sutherland & Hodgman, one half plane
-/// at a time).
+/// Every crossing of two strips' edges that lies inside all strips, anticlockwise. There are at most 32 wheels, so trying
+/// all pairs is quick, and unlike cutting edge by edge it does not mind strips that coincide.
 fn polygon(wheels: &[([f64; 2], f64)]) -> Vec<[f64; 2]> {
-    let far = wheels.iter().map(|([x, y], max)| max / libm::hypot(*x, *y)).fold(0.0, f64::max) * 1e6;
-    let mut corners = vec![[far, far], [-far, far], [-far, -far], [far, -far]];
-    for ([x, y], max) in wheels {
-        for sign in [1.0, -1.0] {
-            let inside = |p: &[f64; 2]| max - sign * (x * p[0] + y * p[1]);
-            let mut kept = Vec::with_capacity(corners.len() + 1);
-            for (i, p) in corners.iter().enumerate() {
-                let q = &corners[(i + 1) % corners.len()];
-                let (at_p, at_q) = (inside(p), inside(q));
-                if at_p >= 0.0 {
-                    kept.push(*p);
-                }
-                if (at_p > 0.0 && at_q < 0.0) || (at_p < 0.0 && at_q > 0.0) {
-                    let share = at_p / (at_p - at_q);
-                    kept.push([p[0] + share * (q[0] - p[0]), p[1] + share * (q[1] - p[1])]);
-                }
+    let edges: Vec<([f64; 2], f64)> =
+        wheels.iter().flat_map(|(row, max)| [(*row, *max), (*row, -*max)]).collect();
+    let mut corners: Vec<[f64; 2]> = Vec::new();
+    for (i, ([ax, ay], a)) in edges.iter().enumerate() {
+        for ([bx, by], b) in edges.iter().skip(i + 1) {
+            let across = ax * by - ay * bx;
+            if across.abs() < 1e-9 * libm::hypot(*ax, *ay) * libm::hypot(*bx, *by) {
+                continue;
             }
-            corners = kept;
+            let corner = [(a * by - b * ay) / across, (b * ax - a * bx) / across];
+            let inside = wheels
+                .iter()
+                .all(|([x, y], max)| (x * corner[0] + y * corner[1]).abs() <= max * (1.0 + 1e-9));
+            let size = libm::hypot(corner[0], corner[1]);
+            let known =
+                corners.iter().any(|it| libm::hypot(it[0] - corner[0], it[1] - corner[1]) < 1e-9 * size);
+            if inside && !known {
+                corners.push(corner);
+            }
         }
     }
-    let size = corners.iter().map(|p| libm::hypot(p[0], p[1])).fold(0.0, f64::max);
-    let mut distinct: Vec<[f64; 2]> = Vec::with_capacity(corners.len());
-    for p in corners {
-        let near = |q: &[f64; 2]| libm::hypot(p[0] - q[0], p[1] - q[1]) < 1e-12 * size;
-        let closes = distinct.len() > 1 && distinct.first().is_some_and(near);
-        if !closes && !distinct.last().is_some_and(near) {
-            distinct.push(p);
-        }
-    }
-    distinct
+    corners.sort_by(|a, b| libm::atan2(a[1], a[0]).total_cmp(&libm::atan2(b[1], b[0])));
+    corners
 }

@@ -37,6 +37,8 @@ pub struct Key {
     pub default: Option<&'static str>,
     /// One line of help.
     pub help: &'static str,
+    /// Why a number outside the range cannot be, where that is not plain; empty otherwise.
+    pub why: &'static str,
 }
 
 const fn key(
@@ -47,7 +49,13 @@ const fn key(
     default: Option<&'static str>,
     help: &'static str,
 ) -> Key {
-    Key { table, name, unit, kind, default, help }
+    Key { table, name, unit, kind, default, help, why: "" }
+}
+
+impl Key {
+    const fn because(self, why: &'static str) -> Self {
+        Self { why, ..self }
+    }
 }
 
 use Kind::{Axis, Button, Flag, Number, Pair, Text, Whole, Word};
@@ -123,8 +131,10 @@ pub const KEYS: &[Key] = &[
         Number(-80.0, 80.0),
         None,
         "roller angle: 0 for an omni wheel, 45 or -45 for mecanum",
-    ),
-    key("wheel", "radius_m", "m", Number(0.001, 5.0), None, "rolling radius"),
+    )
+    .because("near 90 degrees the rollers roll the way the wheel does, and it drives nothing"),
+    key("wheel", "radius_m", "m", Number(0.001, 5.0), None, "rolling radius")
+        .because("no wheel has such a radius"),
     key("wheel", "max_rad_s", "rad/s", Number(0.01, 10000.0), None, "greatest speed of the wheel"),
     key("wheel", "max_rad_s2", "rad/s^2", Number(0.01, 1e6), None, "greatest acceleration of the wheel"),
     key("wheel", "link", "", Text(40), None, "name of the link that its driver hangs on"),
@@ -449,6 +459,15 @@ pub fn find(table: &str, name: &str) -> Option<&'static Key> {
     KEYS.iter().find(|it| it.table == table && it.name == name)
 }
 
+/// A table's header as it is written in a file.
+#[must_use]
+pub fn header(table: &str) -> String {
+    match TABLES.iter().find(|it| it.0 == table) {
+        Some((_, true, _)) => format!("[[{table}]]"),
+        Some(_) | None => format!("[{table}]"),
+    }
+}
+
 impl Kind {
     /// The range in words.
     #[must_use]
@@ -459,7 +478,7 @@ impl Kind {
             Self::Pair(least, most) => format!("two numbers, {least} to {most}"),
             Self::Text(most) => format!("text, at most {most} bytes"),
             Self::Flag => "true or false".into(),
-            Self::Word(words) => words.iter().map(|it| format!("\"{it}\"")).collect::<Vec<_>>().join(", "),
+            Self::Word(words) => words.iter().map(|it| format!("\"{it}\"")).collect::<Vec<_>>().join(" or "),
             Self::Button => "a button by gilrs' name".into(),
             Self::Axis => "an axis by gilrs' name, \"-\" before it turns its sign".into(),
         }
@@ -470,9 +489,8 @@ impl Kind {
 #[must_use]
 pub fn reference() -> String {
     let mut text = String::from("# Every key of a configuration. Keys without a default must be given.\n");
-    for (table, several, help) in TABLES {
-        let brackets = if *several { ("[[", "]]") } else { ("[", "]") };
-        text += &format!("\n{}{table}{}  # {help}\n", brackets.0, brackets.1);
+    for (table, _, help) in TABLES {
+        text += &format!("\n{}  # {help}\n", header(table));
         for key in KEYS.iter().filter(|it| it.table == *table) {
             let default = match (key.default, key.kind) {
                 (None, _) => "must be given".into(),

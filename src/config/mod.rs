@@ -1,15 +1,14 @@
 //! TOML to a checked [`Plan`], with the line and the reason for each refusal.
 
-pub mod checks;
+mod checks;
 pub mod keys;
 mod mistake;
 mod parse;
 pub mod plan;
 mod reader;
 
-pub use checks::link_load;
 pub use mistake::Mistake;
-pub use parse::{ConfigError, load, parse};
+pub use parse::{ConfigError, load, parse, wheels};
 pub use plan::*;
 
 /// The configuration that `rehearse` uses unless another is given.

@@ -4,11 +4,11 @@ use std::path::{Path, PathBuf};
 
 use toml::de::DeTable;
 
-use super::checks::{self, Links, Paces, Wheels};
+use super::checks::{self, Entry, Links};
 use super::reader::{At, Notes, Section, refuse_unknown_tables};
 use super::{
     BayPlan, ConsolePlan, GuardPlan, HeadingSource, LinkPlan, Mistake, PacePlan, PadAxis, PadButton, PadPlan,
-    Plan, RecordPlan, RoomPlan, SignedAxis, StopCategory, TickPlan, WheelPlan, keys,
+    Plan, RecordPlan, RoomPlan, SignedAxis, StopCategory, TickPlan, WheelPlan,
 };
 use crate::base::Wheel;
 use crate::shaping::{Limits, Pace, Response, Saturation};
@@ -33,13 +33,10 @@ pub enum ConfigError {
 }
 
 fn many(mistakes: &[Mistake]) -> String {
+    let file = mistakes.first().map_or("the configuration", |it| &it.file);
     let all: Vec<String> = mistakes.iter().map(ToString::to_string).collect();
-    format!(
-        "{}\n{} {} in the configuration; nothing was started",
-        all.join("\n"),
-        all.len(),
-        if all.len() == 1 { "mistake" } else { "mistakes" }
-    )
+    let mistakes = if all.len() == 1 { "mistake" } else { "mistakes" };
+    format!("{} {mistakes} in {file}; nothing was started\n{}", all.len(), all.join("\n"))
 }
 
 /// Reads and checks a file.
@@ -76,23 +73,30 @@ pub fn parse(text: &str, file: &str) -> Result<(Plan, Vec<Mistake>), Vec<Mistake
     }
 }
 
+/// The wheels' names and geometry alone, where they can be read, whatever else is wrong with a text.
+#[must_use]
+pub fn wheels(text: &str) -> Option<Vec<(String, Wheel)>> {
+    let notes = Notes::new("", text);
+    let (root, _) = DeTable::parse_recoverable(text);
+    let sections = Section::several(&notes, &root, "wheel");
+    let all: Option<Vec<_>> =
+        sections.iter().map(|it| Some((it.text("name")?.value, geometry(it)?))).collect();
+    all.filter(|it| !it.is_empty())
+}
+
 /// Reads every table before it gives up, so that all mistakes come out at once.
 fn plan(notes: &Notes<'_>, root: &toml::Spanned<DeTable<'_>>) -> Option<Plan> {
     refuse_unknown_tables(notes, root);
     let single = |name| Section::single(notes, root, name);
     let base = single("base");
     let (name, outline) = (base.text("name"), base.pair("outline_m"));
-    let link_sections = Section::several(notes, root, "link");
-    let links: Links = link_sections.iter().map(|it| (link(it), it.span.clone())).collect();
-    checks::links(notes, &links);
-    let wheel_sections = Section::several(notes, root, "wheel");
-    let wheels: Wheels = wheel_sections.iter().map(|it| wheel(it, &links, notes)).collect();
-    let pace_sections = Section::several(notes, root, "pace");
-    let paces: Paces = pace_sections.iter().map(|it| (pace(it), it.span.clone())).collect();
+    let several = |name| Section::several(notes, root, name);
+    let links: Vec<_> = entries(several("link"), link);
+    let wheels: Vec<_> = entries(several("wheel"), |it| wheel(it, &links, notes));
+    let paces: Vec<_> = entries(several("pace"), pace);
     let limits_section = single("limits");
     let limits = limits(&limits_section);
-    let pad_section = single("pad");
-    let pad = pad(&pad_section, notes);
+    let pad = pad(&single("pad"), notes);
     let room = room(&single("room"));
     let guard_section = single("guard");
     let guard = guard(&guard_section);
@@ -104,16 +108,19 @@ fn plan(notes: &Notes<'_>, root: &toml::Spanned<DeTable<'_>>) -> Option<Plan> {
     };
     let record = record(&single("record"));
     let console = console(&single("console"));
-    let _bench = single("bench");
+    let _no_keys_yet = single("bench");
 
+    checks::links(notes, &links);
     checks::channels(notes, &wheels, &links);
-    let layout = checks::layout(notes, &wheels, &wheel_sections);
+    let layout = checks::layout(notes, &wheels, outline.as_ref().map(|it| it.value));
     if let (Some(limits), Some(layout)) = (&limits, &layout) {
         checks::motion(notes, layout, &wheels, &paces, limits, &limits_section);
     }
     if let Some(tick) = &tick {
-        checks::times(notes, tick, &links, guard.as_ref(), &guard_section);
         checks::load(notes, tick, &links);
+        if let Some(guard) = &guard {
+            checks::times(notes, tick, &links, guard, &guard_section);
+        }
         if let Some(limits) = &limits {
             checks::smoothing(notes, tick, limits, &limits_section);
         }
@@ -123,10 +130,10 @@ fn plan(notes: &Notes<'_>, root: &toml::Spanned<DeTable<'_>>) -> Option<Plan> {
         text: notes.text.to_owned(),
         name: name?.value,
         outline_m: outline?.value,
-        wheels: wheels.into_iter().map(|it| it.0).collect::<Option<_>>()?,
+        wheels: plans(wheels)?,
         layout: layout?,
-        links: links.into_iter().map(|it| it.0).collect::<Option<_>>()?,
-        paces: paces.into_iter().map(|it| it.0).collect::<Option<_>>()?,
+        links: plans(links)?,
+        paces: plans(paces)?,
         limits: limits?,
         pad: pad?,
         room: room?,
@@ -136,6 +143,14 @@ fn plan(notes: &Notes<'_>, root: &toml::Spanned<DeTable<'_>>) -> Option<Plan> {
         record: record?,
         console: console?,
     })
+}
+
+fn entries<'a, T>(sections: Vec<Section<'a>>, read: impl Fn(&Section<'a>) -> Option<T>) -> Vec<Entry<'a, T>> {
+    sections.into_iter().map(|section| Entry { plan: read(&section), section }).collect()
+}
+
+fn plans<T>(entries: Vec<Entry<'_, T>>) -> Option<Vec<T>> {
+    entries.into_iter().map(|it| it.plan).collect()
 }
 
 fn link(section: &Section<'_>) -> Option<LinkPlan> {
@@ -158,53 +173,54 @@ fn link(section: &Section<'_>) -> Option<LinkPlan> {
     })
 }
 
-fn wheel(
-    section: &Section<'_>,
-    links: &Links,
-    notes: &Notes<'_>,
-) -> (Option<WheelPlan>, std::ops::Range<usize>) {
-    let (name, at) = (section.text("name"), section.pair("at_m"));
-    let (drive, roller, radius) =
-        (section.number("drive_deg"), section.number("roller_deg"), section.number("radius_m"));
+fn wheel(section: &Section<'_>, links: &Links<'_>, notes: &Notes<'_>) -> Option<WheelPlan> {
+    let (name, geometry) = (section.text("name"), geometry(section));
     let (speed, acceleration) = (section.number("max_rad_s"), section.number("max_rad_s2"));
     let (link_name, channel) = (section.text("link"), section.whole("channel"));
     let (reversed, gear) = (section.flag("reversed"), section.number("gear"));
-    let link = link_name.and_then(|At { value, span }| {
-        let known: Vec<&str> =
-            links.iter().filter_map(|it| it.0.as_ref().map(|it| it.name.as_str())).collect();
-        let found = links.iter().position(|it| it.0.as_ref().is_some_and(|it| it.name == value));
-        // A link that could not be read may be the one that is meant.
-        if found.is_none() && links.iter().all(|it| it.0.is_some()) {
-            notes.wrong(
-                &span,
-                format!(
-                    "there is no link \"{value}\"; it must be the name of a [[link]]: {}",
-                    known.join(", ")
-                ),
-            );
-        }
-        found
-    });
-    let plan = (|| {
-        let [x_m, y_m] = at?.value;
-        Some(WheelPlan {
-            name: name?.value,
-            geometry: Wheel {
-                x_m,
-                y_m,
-                drive_rad: rad(drive?.value),
-                roller_rad: rad(roller?.value),
-                radius_m: radius?.value,
-            },
-            max_rad_s: speed?.value,
-            max_rad_s2: acceleration?.value,
-            link: link?,
-            channel: u8::try_from(channel?.value).ok()?,
-            reversed: reversed?.value,
-            gear: gear?.value,
-        })
-    })();
-    (plan, section.span.clone())
+    let link = link_name.and_then(|name| named(&name, links, notes));
+    Some(WheelPlan {
+        name: name?.value,
+        geometry: geometry?,
+        max_rad_s: speed?.value,
+        max_rad_s2: acceleration?.value,
+        link: link?,
+        channel: u8::try_from(channel?.value).ok()?,
+        reversed: reversed?.value,
+        gear: gear?.value,
+    })
+}
+
+fn geometry(section: &Section<'_>) -> Option<Wheel> {
+    let (at, radius) = (section.pair("at_m"), section.number("radius_m"));
+    let (drive, roller) = (section.number("drive_deg"), section.number("roller_deg"));
+    let [x_m, y_m] = at?.value;
+    Some(Wheel {
+        x_m,
+        y_m,
+        drive_rad: rad(drive?.value),
+        roller_rad: rad(roller?.value),
+        radius_m: radius?.value,
+    })
+}
+
+/// The index of the link of that name.
+fn named(name: &At<String>, links: &Links<'_>, notes: &Notes<'_>) -> Option<usize> {
+    let found = links.iter().position(|it| it.plan.as_ref().is_some_and(|it| it.name == name.value));
+    // A link that could not be read may be the one that is meant.
+    if found.is_none() && links.iter().all(|it| it.plan.is_some()) {
+        let known: Vec<String> =
+            links.iter().filter_map(|it| it.plan.as_ref()).map(|it| format!("\"{}\"", it.name)).collect();
+        notes.wrong(
+            &name.span,
+            format!(
+                "there is no link \"{}\"; it must be the `name` of a [[link]]: {}",
+                name.value,
+                known.join(", ")
+            ),
+        );
+    }
+    found
 }
 
 fn pace(section: &Section<'_>) -> Option<PacePlan> {
@@ -218,7 +234,7 @@ fn limits(section: &Section<'_>) -> Option<Limits> {
         (section.number("speed_up_m_s2"), section.number("slow_down_m_s2"), section.number("stop_m_s2"));
     let (turn, grip, smoothing) =
         (section.number("turn_rad_s2"), section.number("grip_m_s2"), section.number("smoothing_s"));
-    let saturation = section.word("saturation", &["together", "keep-turn", "keep-travel"]);
+    let saturation = section.word("saturation");
     Some(Limits {
         speed_up_m_s2: up?.value,
         slow_down_m_s2: down?.value,
@@ -231,7 +247,9 @@ fn limits(section: &Section<'_>) -> Option<Limits> {
     })
 }
 
-/// In the order of [`keys::AXES`].
+const AXIS_KEYS: [&str; 3] = ["forward", "left", "turn_left"];
+
+/// In the order of [`super::keys::AXES`].
 const AXES: [PadAxis; 8] = [
     PadAxis::LeftStickX,
     PadAxis::LeftStickY,
@@ -243,7 +261,7 @@ const AXES: [PadAxis; 8] = [
     PadAxis::DPadY,
 ];
 
-/// In the order of [`keys::BUTTONS`].
+/// In the order of [`super::keys::BUTTONS`].
 const BUTTONS: [PadButton; 19] = [
     PadButton::South,
     PadButton::East,
@@ -273,12 +291,10 @@ fn pad(section: &Section<'_>, notes: &Notes<'_>) -> Option<PadPlan> {
             AXES.get(at).map(|axis| At { value: SignedAxis { axis: *axis, inverted }, span })
         })
     };
-    let axes = [axis("forward"), axis("left"), axis("turn_left")];
+    let axes = AXIS_KEYS.map(axis);
     let names = ["hold", "ready", "reset", "stop", "pace_up", "pace_down", "frame", "zero_heading"];
     let buttons = names.map(|name| {
-        section
-            .word(name, keys::BUTTONS)
-            .and_then(|At { value, span }| BUTTONS.get(value).map(|it| At { value: *it, span }))
+        section.word(name).and_then(|At { value, span }| BUTTONS.get(value).map(|it| At { value: *it, span }))
     });
     let (deadband, curve) = (section.number("deadband"), section.number("curve"));
     let (on, off, squeeze) =
@@ -288,8 +304,10 @@ fn pad(section: &Section<'_>, notes: &Notes<'_>) -> Option<PadPlan> {
             if let (Some(one), Some(other)) = (one, other)
                 && one.value == other.value
             {
+                // Where one of them goes by its default, what was written is the other.
+                let at = if section.given(names[j]) { &other.span } else { &one.span };
                 notes.wrong(
-                    &other.span,
+                    at,
                     format!(
                         "`{}` and `{}` are both {:?}; each needs a button of its own",
                         names[i], names[j], one.value
@@ -299,12 +317,13 @@ fn pad(section: &Section<'_>, notes: &Notes<'_>) -> Option<PadPlan> {
         }
     }
     for (i, one) in axes.iter().enumerate() {
-        for other in axes.iter().skip(i + 1) {
+        for (j, other) in axes.iter().enumerate().skip(i + 1) {
             if let (Some(one), Some(other)) = (one, other)
                 && one.value.axis == other.value.axis
             {
+                let at = if section.given(AXIS_KEYS[j]) { &other.span } else { &one.span };
                 notes.wrong(
-                    &other.span,
+                    at,
                     format!("{:?} is used twice; travel and turn need three axes", one.value.axis),
                 );
             }
@@ -364,7 +383,7 @@ fn is_id(text: &str) -> bool {
 }
 
 fn room(section: &Section<'_>) -> Option<RoomPlan> {
-    let (heading, lead) = (section.word("heading", &["wheels", "gyro"]), section.number("lead_ms"));
+    let (heading, lead) = (section.word("heading"), section.number("lead_ms"));
     Some(RoomPlan {
         heading: if heading?.value == 0 { HeadingSource::Wheels } else { HeadingSource::Gyro },
         lead_ms: lead?.value,

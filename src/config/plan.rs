@@ -4,6 +4,12 @@ use std::path::PathBuf;
 
 use crate::base::{Layout, Wheel};
 use crate::shaping::{Limits, Pace, Response};
+use crate::wire::size;
+
+/// The most links one base may have.
+pub const MAX_LINKS: usize = 8;
+/// The most paces one base may have.
+pub const MAX_PACES: usize = 32;
 
 /// Everything that a configuration says, checked.
 #[derive(Clone, Debug)]
@@ -84,6 +90,21 @@ pub struct LinkPlan {
     pub fifo_bytes: u32,
     /// The adaptor's latency; default 16.
     pub latency_ms: f64,
+}
+
+impl LinkPlan {
+    /// How long so many bytes take on this line: ten bits a byte (8N1).
+    #[must_use]
+    pub fn seconds(&self, bytes: usize) -> f64 {
+        bytes as f64 * 10.0 / f64::from(self.baud)
+    }
+
+    /// Share of the line that is used, to the drivers and from them, with a frame each way in every tick.
+    #[must_use]
+    pub fn load(&self, tick: &TickPlan) -> [f64; 2] {
+        let channels = usize::from(self.channels);
+        [size::drive(channels), size::feedback(channels)].map(|it| self.seconds(it) * tick.rate_hz)
+    }
 }
 
 /// One `[[pace]]`.

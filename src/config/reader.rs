@@ -39,6 +39,7 @@ pub(super) struct At<T> {
 }
 
 /// One table of the file.
+#[derive(Clone)]
 pub(super) struct Section<'a> {
     notes: &'a Notes<'a>,
     name: &'static str,
@@ -96,6 +97,26 @@ impl<'a> Section<'a> {
         all
     }
 
+    /// Where a key's value stands; the table's header where it was left out.
+    pub(super) fn at(&self, name: &str) -> Range<usize> {
+        self.find(name).map_or_else(|| self.span.clone(), |(_, span)| span)
+    }
+
+    /// Whether a key is written, and does not go by its default.
+    pub(super) fn given(&self, name: &str) -> bool {
+        self.find(name).is_some()
+    }
+
+    /// As it is written in a file.
+    fn header(&self) -> String {
+        keys::header(self.name)
+    }
+
+    fn find(&self, name: &str) -> Option<(&'a DeValue<'a>, Range<usize>)> {
+        let (_, value) = self.table?.iter().find(|(key, _)| key.get_ref() == name)?;
+        Some((value.get_ref(), value.span()))
+    }
+
     fn refuse_unknown(&self) {
         for (key, _) in self.table.into_iter().flat_map(|it| it.iter()) {
             if keys::find(self.name, key.get_ref()).is_none() {
@@ -104,9 +125,10 @@ impl<'a> Section<'a> {
                 let hint = nearest(key.get_ref(), &known)
                     .map_or_else(String::new, |it| format!("; did you mean `{it}`?"));
                 let all = if known.is_empty() { "there are none yet".into() } else { known.join(", ") };
+                let read = printable(key.get_ref());
                 self.notes.wrong(
                     &key.span(),
-                    format!("`{}` is no key of [{}]{hint} (known: {all})", key.get_ref(), self.name),
+                    format!("`{read}` is no key of {}{hint} (known: {all})", self.header()),
                 );
             }
         }
@@ -114,28 +136,44 @@ impl<'a> Section<'a> {
 
     /// The value of a key, or `None` where it was left out; a key that must be given is then a mistake.
     fn value(&self, name: &str) -> Option<(&'a DeValue<'a>, Range<usize>)> {
-        let found = self.table.into_iter().flat_map(|it| it.iter()).find(|(key, _)| key.get_ref() == name);
+        let found = self.find(name);
         if found.is_none() && keys::find(self.name, name).is_some_and(|it| it.default.is_none()) {
-            self.notes.wrong(&self.span, format!("[{}] lacks `{name}`: {}", self.name, self.needs(name)));
+            self.notes.wrong(&self.span, format!("{} lacks `{name}`: {}", self.header(), self.needs(name)));
         }
-        found.map(|(_, value)| (value.get_ref(), value.span()))
+        found
     }
 
     /// What a key needs, in words.
     fn needs(&self, name: &str) -> String {
         keys::find(self.name, name).map_or_else(String::new, |it| {
             let unit = if it.unit.is_empty() { String::new() } else { format!(" {}", it.unit) };
-            format!("{}{unit} ({})", it.kind.range(), it.help)
+            let range = match it.kind {
+                Kind::Button => format!("one of {}", keys::BUTTONS.join(", ")),
+                Kind::Axis => format!("one of {}, or that with \"-\" before it", keys::AXES.join(", ")),
+                Kind::Number(..)
+                | Kind::Whole(..)
+                | Kind::Pair(..)
+                | Kind::Text(_)
+                | Kind::Flag
+                | Kind::Word(_) => it.kind.range(),
+            };
+            format!("{range}{unit} ({})", it.help)
         })
     }
 
-    fn refuse(&self, name: &str, span: &Range<usize>) {
+    /// What was read, why it cannot be, what would do.
+    fn refuse(&self, name: &str, span: &Range<usize>, why: &str) {
         let read = self.notes.text.get(span.clone()).unwrap_or("").lines().next().unwrap_or("");
-        self.notes.wrong(span, format!("`{name}` cannot be {read}; it must be {}", self.needs(name)));
+        let shown = printable(read.get(..60).unwrap_or(read));
+        self.notes.wrong(span, format!("`{name}` cannot be {shown}: {why}; it must be {}", self.needs(name)));
     }
 
     fn default(&self, name: &str) -> &'static str {
         keys::find(self.name, name).and_then(|it| it.default).unwrap_or("")
+    }
+
+    fn kind(&self, name: &str) -> Option<Kind> {
+        keys::find(self.name, name).map(|it| it.kind)
     }
 
     /// A number; `None` when it is wrong, or left out without a default.
@@ -143,15 +181,18 @@ impl<'a> Section<'a> {
         let Some((value, span)) = self.value(name) else {
             return self.default(name).parse().ok().map(|value| At { value, span: self.span.clone() });
         };
-        let read = number(value);
-        let fits = match keys::find(self.name, name).map(|it| it.kind) {
-            Some(Kind::Number(least, most)) => read.is_some_and(|it| it >= least && it <= most),
-            Some(_) | None => false,
-        };
-        if !fits {
-            self.refuse(name, &span);
+        let Some(Kind::Number(least, most)) = self.kind(name) else { return None };
+        match number(value).and_then(|it| within(it, least, most)) {
+            Ok(value) => Some(At { value, span }),
+            Err(why) => {
+                let why = match keys::find(self.name, name) {
+                    Some(key) if !key.why.is_empty() && number(value).is_ok() => key.why,
+                    Some(_) | None => why,
+                };
+                self.refuse(name, &span, why);
+                None
+            }
         }
-        read.filter(|_| fits).map(|value| At { value, span })
     }
 
     /// A whole number.
@@ -159,34 +200,45 @@ impl<'a> Section<'a> {
         let Some((value, span)) = self.value(name) else {
             return self.default(name).parse().ok().map(|value| At { value, span: self.span.clone() });
         };
-        let read = value.as_integer().and_then(|it| i64::from_str_radix(it.as_str(), it.radix()).ok());
-        let fits = match keys::find(self.name, name).map(|it| it.kind) {
-            Some(Kind::Whole(least, most)) => read.is_some_and(|it| it >= least && it <= most),
-            Some(_) | None => false,
+        let Some(Kind::Whole(least, most)) = self.kind(name) else { return None };
+        let read = match value.as_integer() {
+            Some(it) => i64::from_str_radix(it.as_str(), it.radix()).map_err(|_| "it has too many digits"),
+            None => Err(number(value).err().unwrap_or("it is not a whole number")),
         };
-        if !fits {
-            self.refuse(name, &span);
+        let read = read.and_then(|it| match it {
+            it if it < least => Err("it is too small"),
+            it if it > most => Err("it is too large"),
+            it => Ok(it),
+        });
+        match read {
+            Ok(value) => Some(At { value, span }),
+            Err(why) => {
+                self.refuse(name, &span, why);
+                None
+            }
         }
-        read.filter(|_| fits).map(|value| At { value, span })
     }
 
     /// Two numbers.
     pub(super) fn pair(&self, name: &str) -> Option<At<[f64; 2]>> {
         let (value, span) = self.value(name)?;
-        let read: Option<Vec<f64>> =
-            value.as_array().map(|it| it.iter().filter_map(|it| number(it.get_ref())).collect());
-        let fits = match keys::find(self.name, name).map(|it| it.kind) {
-            Some(Kind::Pair(least, most)) => read.as_ref().is_some_and(|it| {
-                it.len() == 2
-                    && value.as_array().is_some_and(|all| all.len() == 2)
-                    && it.iter().all(|it| *it >= least && *it <= most)
-            }),
-            Some(_) | None => false,
+        let Some(Kind::Pair(least, most)) = self.kind(name) else { return None };
+        let read = match value.as_array().map(|it| it.iter().collect::<Vec<_>>()).as_deref() {
+            Some([a, b]) => {
+                let one = |it: &Spanned<DeValue<'_>>| {
+                    number(it.get_ref())
+                        .and_then(|it| within(it, least, most))
+                        .map_err(|why| (it.span(), why))
+                };
+                one(a).and_then(|a| Ok([a, one(b)?]))
+            }
+            Some(_) => Err((span.clone(), "it has not two entries")),
+            None => Err((span.clone(), "it is no list [a, b]")),
         };
-        match read.as_deref() {
-            Some([a, b]) if fits => Some(At { value: [*a, *b], span }),
-            Some(_) | None => {
-                self.refuse(name, &span);
+        match read {
+            Ok(value) => Some(At { value, span }),
+            Err((span, why)) => {
+                self.refuse(name, &span, why);
                 None
             }
         }
@@ -194,29 +246,20 @@ impl<'a> Section<'a> {
 
     /// A text.
     pub(super) fn text(&self, name: &str) -> Option<At<String>> {
+        let row = keys::find(self.name, name)?;
         let Some((value, span)) = self.value(name) else {
-            let default = keys::find(self.name, name)?.default?;
-            return Some(At { value: default.into(), span: self.span.clone() });
+            return Some(At { value: row.default?.into(), span: self.span.clone() });
         };
-        let row = keys::find(self.name, name);
-        let most = match row.map(|it| it.kind) {
-            Some(Kind::Text(most)) => most,
-            Some(_) | None => 0,
+        let Kind::Text(most) = row.kind else { return None };
+        let why = match value.as_str() {
+            None => "it is not a text in quotes",
+            Some(it) if it.trim().is_empty() && row.default.is_none() => "it is empty",
+            Some(it) if it.len() > most => "it is too long",
+            Some(it) if it.chars().any(unprintable) => "it holds a character that cannot be printed",
+            Some(it) => return Some(At { value: it.to_owned(), span }),
         };
-        let may_be_empty = row.is_some_and(|it| it.default.is_some());
-        match value.as_str() {
-            Some(it)
-                if it.len() <= most
-                    && (may_be_empty || !it.trim().is_empty())
-                    && !it.contains(['\n', '\0']) =>
-            {
-                Some(At { value: it.to_owned(), span })
-            }
-            Some(_) | None => {
-                self.refuse(name, &span);
-                None
-            }
-        }
+        self.refuse(name, &span, why);
+        None
     }
 
     /// true or false.
@@ -227,52 +270,47 @@ impl<'a> Section<'a> {
         match value.as_bool() {
             Some(value) => Some(At { value, span }),
             None => {
-                self.refuse(name, &span);
+                self.refuse(name, &span, "it is neither");
                 None
             }
         }
     }
 
-    /// One word of a list; gives its index in it.
-    pub(super) fn word(&self, name: &str, words: &[&str]) -> Option<At<usize>> {
-        let (read, span) = match self.value(name) {
-            None => (Some(self.default(name)), self.span.clone()),
-            Some((value, span)) => (value.as_str(), span),
-        };
-        match read.and_then(|read| words.iter().position(|it| *it == read)) {
-            Some(value) => Some(At { value, span }),
-            None => {
-                let hint = read
-                    .and_then(|it| nearest(it, words))
-                    .map_or_else(String::new, |it| format!("; did you mean \"{it}\"?"));
-                let read = read.unwrap_or("what is written");
-                self.notes.wrong(
-                    &span,
-                    format!("`{name}` cannot be \"{read}\"; it must be {}{hint}", self.needs(name)),
-                );
-                None
+    /// One word of the key's list; gives its index in it.
+    pub(super) fn word(&self, name: &str) -> Option<At<usize>> {
+        let words = match self.kind(name)? {
+            Kind::Word(words) => words,
+            Kind::Button => keys::BUTTONS,
+            Kind::Number(..) | Kind::Whole(..) | Kind::Pair(..) | Kind::Text(_) | Kind::Flag | Kind::Axis => {
+                return None;
             }
-        }
+        };
+        self.one_of(name, words, |read, word| read == word)
     }
 
     /// An axis: index in [`keys::AXES`] and whether its sign is turned.
     pub(super) fn axis(&self, name: &str) -> Option<At<(usize, bool)>> {
+        let turned = |read: &str| read.starts_with('-');
+        let found =
+            self.one_of(name, keys::AXES, |read, word| read.strip_prefix('-').unwrap_or(read) == word)?;
+        let read = self.find(name).and_then(|it| it.0.as_str()).unwrap_or(self.default(name));
+        Some(At { value: (found.value, turned(read)), span: found.span })
+    }
+
+    fn one_of(&self, name: &str, words: &[&str], is: impl Fn(&str, &str) -> bool) -> Option<At<usize>> {
         let (read, span) = match self.value(name) {
             None => (Some(self.default(name)), self.span.clone()),
             Some((value, span)) => (value.as_str(), span),
         };
-        let read = read.unwrap_or("");
-        let bare = read.strip_prefix('-').unwrap_or(read);
-        match keys::AXES.iter().position(|it| *it == bare) {
-            Some(at) => Some(At { value: (at, bare.len() != read.len()), span }),
+        match read.and_then(|read| words.iter().position(|word| is(read, word))) {
+            Some(value) => Some(At { value, span }),
             None => {
-                self.notes.wrong(
-                    &span,
-                    format!(
-                        "`{name}` cannot be \"{read}\"; it must be one of {}, or that with \"-\" before it",
-                        keys::AXES.join(", ")
-                    ),
-                );
+                let why = match read.map(|it| nearest(it.trim_start_matches('-'), words)) {
+                    None => "it is not a word in quotes".to_owned(),
+                    Some(None) => "it is not known".to_owned(),
+                    Some(Some(near)) => format!("it is not known, perhaps \"{near}\" is meant"),
+                };
+                self.refuse(name, &span, &why);
                 None
             }
         }
@@ -290,7 +328,7 @@ pub(super) fn refuse_unknown_tables(notes: &Notes<'_>, root: &Spanned<DeTable<'_
                 &key.span(),
                 format!(
                     "`{}` is no table of a configuration{hint} (known: {})",
-                    key.get_ref(),
+                    printable(key.get_ref()),
                     known.join(", ")
                 ),
             );
@@ -298,14 +336,40 @@ pub(super) fn refuse_unknown_tables(notes: &Notes<'_>, root: &Spanned<DeTable<'_
     }
 }
 
-/// A finite number, written with or without a point.
-fn number(value: &DeValue<'_>) -> Option<f64> {
-    let read: f64 = match (value.as_float(), value.as_integer()) {
-        (Some(it), _) => it.as_str().replace('_', "").parse().ok()?,
-        (None, Some(it)) if it.radix() == 10 => it.as_str().parse().ok()?,
-        (None, _) => return None,
+/// A finite number, written with or without a point; or why it is none.
+fn number(value: &DeValue<'_>) -> Result<f64, &'static str> {
+    let read: Option<f64> = match (value.as_float(), value.as_integer()) {
+        (Some(it), _) => it.as_str().replace('_', "").parse().ok(),
+        (None, Some(it)) if it.radix() == 10 => it.as_str().parse().ok(),
+        (None, Some(it)) => i64::from_str_radix(it.as_str(), it.radix()).ok().map(|it| it as f64),
+        (None, None) if value.is_str() => return Err("it is a text; take the quotes away"),
+        (None, None) => return Err("it is not a number"),
     };
-    read.is_finite().then_some(read)
+    match read {
+        Some(it) if it.is_finite() => Ok(it),
+        Some(it) if it.is_nan() => Err("that is not a number"),
+        Some(_) => Err("that is not finite"),
+        None => Err("it is not a number"),
+    }
+}
+
+fn within(value: f64, least: f64, most: f64) -> Result<f64, &'static str> {
+    match value {
+        it if it < least => Err("it is too small"),
+        it if it > most => Err("it is too large"),
+        it => Ok(it),
+    }
+}
+
+/// Characters that would not show, or would turn the text round them.
+fn unprintable(it: char) -> bool {
+    it.is_control()
+        || matches!(it, '\u{200b}'..='\u{200f}' | '\u{2028}'..='\u{202e}' | '\u{2066}'..='\u{2069}' | '\u{feff}')
+}
+
+/// The same with a mark in place of each such character.
+pub(super) fn printable(text: &str) -> String {
+    text.chars().map(|it| if unprintable(it) { '\u{fffd}' } else { it }).collect()
 }
 
 /// The known word that a misspelt one is nearest to, if it is near at all (Levenshtein distance).

@@ -2,6 +2,8 @@
 
 use serde::{Deserialize, Serialize};
 
+use crate::config::StopCategory;
+
 /// Why the phase is Tripped.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Cause {
@@ -97,6 +99,86 @@ pub enum Cause {
         /// The link.
         link: u8,
     },
+}
+
+impl Cause {
+    /// A short word for records and tables.
+    #[must_use]
+    pub const fn code(&self) -> &'static str {
+        match self {
+            Self::StopAsked(StopBy::PadButton) => "stop-pad",
+            Self::StopAsked(StopBy::Squeeze) => "stop-squeeze",
+            Self::StopAsked(StopBy::Console) => "stop-console",
+            Self::StopAsked(StopBy::DriverInput { .. }) => "stop-input",
+            Self::PadGone => "pad-gone",
+            Self::FeedbackQuiet { .. } => "feedback-quiet",
+            Self::NotHeard { .. } => "not-heard",
+            Self::WriteFailed { .. } => "write-fails",
+            Self::LateTick { .. } => "late-tick",
+            Self::NoTick => "no-tick",
+            Self::DriverSays { .. } => "driver-says",
+            Self::NotFollowing { .. } => "not-following",
+            Self::NotSlowing { .. } => "not-slowing",
+            Self::Runaway { .. } => "runaway",
+            Self::Skid { .. } => "skid",
+            Self::StopOverdue { .. } => "stop-overdue",
+            Self::SecondSignal => "second-signal",
+            Self::Panic => "panic",
+            Self::FoundLatched { .. } => "found-latched",
+            Self::NotCleared { .. } => "not-cleared",
+        }
+    }
+
+    /// The stop category of IEC 60204-1 that it makes: 0 takes the torque off at once, 1 ramps first. `asked` is the
+    /// category configured for stops that a person asks.
+    #[must_use]
+    pub const fn category(&self, asked: StopCategory) -> StopCategory {
+        match self {
+            Self::Runaway { .. } | Self::NotSlowing { .. } => StopCategory::Zero,
+            Self::StopAsked(_) => asked,
+            Self::PadGone
+            | Self::FeedbackQuiet { .. }
+            | Self::NotHeard { .. }
+            | Self::WriteFailed { .. }
+            | Self::LateTick { .. }
+            | Self::NoTick
+            | Self::DriverSays { .. }
+            | Self::NotFollowing { .. }
+            | Self::Skid { .. }
+            | Self::StopOverdue { .. }
+            | Self::SecondSignal
+            | Self::Panic
+            | Self::FoundLatched { .. }
+            | Self::NotCleared { .. } => StopCategory::One,
+        }
+    }
+
+    /// A stop asked by a person at the pad or at a driver's stop input: only the pad may reset it.
+    #[must_use]
+    pub const fn wants_reset_at_pad(&self) -> bool {
+        match self {
+            Self::StopAsked(by) => match by {
+                StopBy::PadButton | StopBy::Squeeze | StopBy::DriverInput { .. } => true,
+                StopBy::Console => false,
+            },
+            Self::PadGone
+            | Self::FeedbackQuiet { .. }
+            | Self::NotHeard { .. }
+            | Self::WriteFailed { .. }
+            | Self::LateTick { .. }
+            | Self::NoTick
+            | Self::DriverSays { .. }
+            | Self::NotFollowing { .. }
+            | Self::NotSlowing { .. }
+            | Self::Runaway { .. }
+            | Self::Skid { .. }
+            | Self::StopOverdue { .. }
+            | Self::SecondSignal
+            | Self::Panic
+            | Self::FoundLatched { .. }
+            | Self::NotCleared { .. } => false,
+        }
+    }
 }
 
 /// Who asked for the stop.

@@ -1,8 +1,9 @@
 //! What happened in a tick, as facts; words for people are made from them outside the tick.
 
+use arrayvec::ArrayString;
 use serde::{Deserialize, Serialize};
 
-use super::io::Phase;
+use super::io::{Outputs, Phase};
 use super::{Cause, io::Pull};
 use crate::shaping::Frame;
 
@@ -59,8 +60,6 @@ pub enum Event {
         link: u8,
         /// In what.
         field: IdentityField,
-        /// What it says.
-        found: Found,
     },
     /// Pad there, or not any more.
     Pad {
@@ -136,8 +135,6 @@ pub enum Wait {
         link: u8,
         /// In what.
         field: IdentityField,
-        /// What it says.
-        found: Found,
     },
     /// No fresh feedback from a link.
     NoFeedback {
@@ -173,34 +170,90 @@ pub enum Wait {
     NotStanding,
     /// The stop button is down.
     StopDown,
+    /// A link does not yet report that it is latched: the stop has not arrived.
+    NotLatched {
+        /// The link.
+        link: u8,
+    },
 }
 
-/// What an Identity says where it differs.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
-pub enum Found {
-    /// A number.
-    Number(u32),
-    /// A name.
-    Name(arrayvec::ArrayString<24>),
-}
-
-/// In what an Identity differs from the plan.
+/// In what an Identity differs from the plan, with what it says instead.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub enum IdentityField {
     /// The format's version.
-    Version,
+    Version(u8),
     /// The name.
-    Name,
+    Name(ArrayString<24>),
     /// The number of channels.
-    Channels,
-    /// Size of a count of speed.
-    SpeedLsb,
-    /// Size of a count of angle.
-    AngleLsb,
+    Channels(u8),
+    /// Size of a count of speed, urad/s.
+    SpeedLsb(u32),
+    /// Size of a count of angle, urad.
+    AngleLsb(u32),
     /// `silence_ms` below the plan's `valid_ms`.
-    Silence,
+    Silence(u16),
     /// `ramp_max_ms` below the longest ramp needed.
-    RampMax,
+    RampMax(u16),
     /// The plan takes the heading from a gyro, the drivers have none.
     YawRate,
+}
+
+impl Event {
+    /// A short word for records.
+    #[must_use]
+    pub const fn code(&self) -> &'static str {
+        match self {
+            Self::Phase { .. } => "phase",
+            Self::Trip(_) => "trip",
+            Self::Refused { .. } => "refused",
+            Self::Pace { .. } => "pace",
+            Self::Frame(_) => "frame",
+            Self::HeadingZeroed => "heading-zeroed",
+            Self::HeadingFromGyro(_) => "heading-source",
+            Self::Skidding { .. } => "skidding",
+            Self::Pushed { .. } => "pushed",
+            Self::LinkAnswers { .. } => "link-answers",
+            Self::LinkDiffers { .. } => "link-differs",
+            Self::Pad { .. } => "pad",
+            Self::Scaled { .. } => "scaled",
+            Self::FramesRefused { .. } => "frames-refused",
+            Self::LastCheckFired => "last-check",
+            Self::StopLinePulled(_) => "stop-line",
+            Self::SendSkipped { .. } => "send-skipped",
+            Self::TicksMissed { .. } => "ticks-missed",
+            Self::PadQuiet { .. } => "pad-quiet",
+        }
+    }
+
+    /// Must never be crowded out of a tick by lesser events.
+    const fn weighs(&self) -> bool {
+        match self {
+            Self::Phase { .. } | Self::Trip(_) | Self::Refused { .. } | Self::PadQuiet { .. } => true,
+            Self::Pace { .. }
+            | Self::Frame(_)
+            | Self::HeadingZeroed
+            | Self::HeadingFromGyro(_)
+            | Self::Skidding { .. }
+            | Self::Pushed { .. }
+            | Self::LinkAnswers { .. }
+            | Self::LinkDiffers { .. }
+            | Self::Pad { .. }
+            | Self::Scaled { .. }
+            | Self::FramesRefused { .. }
+            | Self::LastCheckFired
+            | Self::StopLinePulled(_)
+            | Self::SendSkipped { .. }
+            | Self::TicksMissed { .. } => false,
+        }
+    }
+}
+
+/// Places of a tick's events that only a phase, a trip or a refusal may take.
+const KEPT_FREE: usize = 4;
+
+/// Tells an event. Lesser ones beyond what a tick can hold are dropped.
+pub(super) fn say(out: &mut Outputs, event: Event) {
+    if event.weighs() || out.events.remaining_capacity() > KEPT_FREE {
+        let _ = out.events.try_push(event);
+    }
 }

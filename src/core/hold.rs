@@ -58,6 +58,11 @@ impl Hold {
         }
     }
 
+    /// Pressed, and a press would count.
+    pub(super) fn outline(self) -> (bool, bool) {
+        (self.pressed, self.armed)
+    }
+
     /// Whether a press would count; and whatever happens, it is spent.
     pub(super) fn spend(&mut self) -> bool {
         core::mem::take(&mut self.armed)

@@ -158,7 +158,7 @@ pub struct ConsoleInput {
 }
 
 /// Where the program stands. The names are final: they appear in records, on the console and in the CSV files.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq, Hash, Serialize, Deserialize)]
 pub enum Phase {
     /// No torque.
     #[default]

@@ -4,10 +4,11 @@ use arrayvec::ArrayVec;
 
 use super::MAX_LINKS;
 use super::hold::HoldSettings;
+use super::sent::KEPT_TWISTS;
 use crate::base::PerWheel;
-use crate::config::{GuardPlan, HeadingSource, LinkPlan, Plan, StopCategory};
+use crate::config::{GuardPlan, HeadingSource, LinkPlan, Plan};
 use crate::shaping::{Pace, ShaperSettings};
-use crate::units::{ns_to_s, s_to_ns};
+use crate::units::s_to_ns;
 
 /// Assumed of drivers whose delay is not configured: a velocity loop of 100 Hz and a frame each way (common practice).
 pub const ASSUMED_DRIVER_MS: f64 = 20.0;
@@ -45,6 +46,7 @@ pub(super) struct Times {
     pub(super) driver_ns: u64,
     pub(super) follow_ns: u64,
     pub(super) slowing_ns: u64,
+    /// The command must have been zero for so long: the lag of drivers and wheels and what the guard adds.
     pub(super) runaway_ns: u64,
     pub(super) skid_ns: u64,
     pub(super) standstill_ns: u64,
@@ -56,16 +58,17 @@ pub(super) struct Times {
 impl Times {
     fn new(guard: &GuardPlan) -> Self {
         let ms = |value: f64| s_to_ns(value * 1e-3);
+        let driver_ms = guard.driver_ms.unwrap_or(ASSUMED_DRIVER_MS);
         Self {
             pad_quiet_stream_ns: ms(guard.pad_quiet_stream_ms),
             pad_quiet_change_ns: ms(guard.pad_quiet_change_ms),
             feedback_quiet_ns: ms(guard.feedback_quiet_ms),
             not_heard_ns: ms(guard.not_heard_ms),
             late_ns: ms(guard.late_ms),
-            driver_ns: ms(guard.driver_ms.unwrap_or(ASSUMED_DRIVER_MS)),
+            driver_ns: ms(driver_ms),
             follow_ns: s_to_ns(guard.follow_s),
             slowing_ns: s_to_ns(guard.slowing_s),
-            runaway_ns: s_to_ns(guard.runaway_s),
+            runaway_ns: ms(driver_ms) + s_to_ns(guard.follow_lag_s) + s_to_ns(guard.runaway_s),
             skid_ns: s_to_ns(guard.skid_s),
             standstill_ns: s_to_ns(guard.standstill_s),
             stop_margin_ns: s_to_ns(guard.stop_margin_s),
@@ -87,6 +90,10 @@ pub(super) struct Settings {
     pub(super) wired: bool,
     pub(super) gyro: bool,
     pub(super) period_ns: u64,
+    /// Of the twists sent, every so-manieth is kept for looking back, so that the drivers' delay always fits.
+    pub(super) kept_every: u16,
+    /// How many kept twists the drivers' delay goes back.
+    pub(super) driver_back: usize,
     /// Longest ramp that can be needed, ms: what Identity's `ramp_max_ms` must bear.
     pub(super) longest_ramp_ms: u16,
     /// Diagonal of the projection on the skid space, a wheel: how much of its own error a wheel shows.
@@ -115,6 +122,10 @@ impl Settings {
                 plan.layout.skid(&unit).get(wheel).copied().unwrap_or(0.0)
             })
             .collect();
+        let times = Times::new(&plan.guard);
+        let period_ns = plan.tick.period_ns().max(1);
+        let driver_ticks = times.driver_ns.div_ceil(period_ns);
+        let kept_every = driver_ticks.div_ceil(KEPT_TWISTS as u64 - 2).max(1);
         Self {
             wheels,
             links: plan.links.iter().map(link_settings).take(MAX_LINKS).collect(),
@@ -124,27 +135,21 @@ impl Settings {
                 off: plan.pad.hold_off,
                 squeeze: plan.pad.hold_squeeze,
             },
-            times: Times::new(&plan.guard),
+            times,
             guard: plan.guard.clone(),
             wired: plan.pad.wired,
             gyro: plan.room.heading == HeadingSource::Gyro,
-            period_ns: plan.tick.period_ns(),
+            period_ns,
+            kept_every: u16::try_from(kept_every).unwrap_or(u16::MAX),
+            driver_back: usize::try_from(driver_ticks / kept_every).unwrap_or(0),
             longest_ramp_ms: longest_ramp_ms(plan),
             skid_share,
         }
     }
 
-    /// Whether a stop that a person asked takes the torque off at once.
-    pub(super) fn stop_asked_is_category_zero(&self) -> bool {
-        self.guard.stop_category == StopCategory::Zero
-    }
-
-    pub(super) fn follow_lag_s(&self) -> f64 {
-        self.guard.follow_lag_s
-    }
-
-    pub(super) fn driver_s(&self) -> f64 {
-        ns_to_s(self.times.driver_ns)
+    /// How many frames the drivers' delay keeps in flight.
+    pub(super) fn in_flight(&self) -> u16 {
+        u16::try_from(self.times.driver_ns.div_ceil(self.period_ns)).unwrap_or(u16::MAX)
     }
 }
 
@@ -173,21 +178,21 @@ pub fn ramp_ms(
     libm::ceil(seconds * 1e3 - 1e-6).clamp(1.0, f64::from(u16::MAX)) as u16
 }
 
-/// The longest ramp that a plan can need: full travel and full turn of its fastest pace at once.
+/// The longest ramp that a plan can need: that of its fastest pace.
 #[must_use]
 pub fn longest_ramp_ms(plan: &Plan) -> u16 {
-    plan.paces
-        .iter()
-        .map(|it| {
-            let twist = crate::base::Twist::new(it.pace.turn_rad_s, it.pace.travel_m_s, 0.0);
-            let wheels = plan.layout.rows().iter().zip(&plan.wheels).map(|([turn, x, y], wheel)| {
-                let speed = turn.abs() * it.pace.turn_rad_s + libm::hypot(*x, *y) * it.pace.travel_m_s;
-                speed.min(wheel.max_rad_s) / wheel.max_rad_s2
-            });
-            ramp_ms(&plan.limits, twist, wheels)
-        })
-        .max()
-        .unwrap_or(1)
+    plan.paces.iter().map(|it| pace_ramp_ms(plan, &it.pace)).max().unwrap_or(1)
+}
+
+/// The longest ramp that one pace can need: full travel and full turn at once.
+#[must_use]
+pub fn pace_ramp_ms(plan: &Plan, pace: &Pace) -> u16 {
+    let twist = crate::base::Twist::new(pace.turn_rad_s, pace.travel_m_s, 0.0);
+    let wheels = plan.layout.rows().iter().zip(&plan.wheels).map(|([turn, x, y], wheel)| {
+        let speed = turn.abs() * pace.turn_rad_s + libm::hypot(*x, *y) * pace.travel_m_s;
+        speed.min(wheel.max_rad_s) / wheel.max_rad_s2
+    });
+    ramp_ms(&plan.limits, twist, wheels)
 }
 
 /// The shaper's settings of a plan.

@@ -12,7 +12,7 @@ use super::script::{self, whole_drive};
 use super::truth;
 use crate::config::{Plan, parse};
 use crate::core::Event;
-use crate::core::budget::{BudgetRow, budget};
+use crate::core::budget::{BudgetRow, Guard, budget};
 use crate::record::Item;
 use crate::record::reader::{Run, RunError};
 use crate::review::{Stop, Summary, summary};
@@ -423,22 +423,23 @@ fn stops(
 /// The budget's row of a stop.
 fn row_of<'a>(rows: &'a [BudgetRow], plan: &Plan, stop: &Stop) -> Option<&'a BudgetRow> {
     let guard = match stop.code.as_str() {
-        "release" | "quit" => "release",
-        "pad-quiet" => "pad quiet",
-        "stop-pad" | "stop-squeeze" | "stop-console" | "stop-input" => "stop asked",
-        "pad-gone" => "pad gone",
-        "feedback-quiet" => "feedback quiet",
-        "not-heard" => "not heard",
-        "write-fails" => "write fails",
-        "late-tick" | "no-tick" => "late tick",
-        "driver-says" | "found-latched" => "driver says",
-        "not-following" | "not-slowing" => "not following",
-        "runaway" => "runaway",
-        "skid" => "skid",
+        "release" | "quit" => Guard::Release,
+        "pad-quiet" if plan.pad.wired => Guard::PadQuietStream,
+        "pad-quiet" => Guard::PadQuietChange,
+        "stop-pad" | "stop-squeeze" | "stop-console" | "stop-input" => Guard::StopAsked,
+        "pad-gone" => Guard::PadGone,
+        "feedback-quiet" => Guard::FeedbackQuiet,
+        "not-heard" => Guard::NotHeard,
+        "write-fails" => Guard::WriteFails,
+        "late-tick" | "no-tick" => Guard::LateTick,
+        "driver-says" | "found-latched" => Guard::DriverSays,
+        "not-following" => Guard::NotFollowing,
+        "not-slowing" => Guard::NotSlowing,
+        "runaway" => Guard::Runaway,
+        "skid" => Guard::Skid,
         _ => return None,
     };
-    let pace = plan.paces.get(usize::from(stop.pace))?;
-    rows.iter().find(|it| it.guard == guard && it.pace == pace.name)
+    rows.iter().find(|it| it.guard == guard && it.pace == usize::from(stop.pace))
 }
 
 /// A machine on which ticks come too late says nothing about the program.

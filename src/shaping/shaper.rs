@@ -203,6 +203,18 @@ impl Shaper {
         self.state.region = self.state.wanted;
     }
 
+    /// How many ticks a stop would take from here until nothing is left to send: braking, then the average running out.
+    #[must_use]
+    pub fn ticks_to_rest(&self) -> u32 {
+        if self.at_rest() {
+            return 0;
+        }
+        let from = self.state.velocity;
+        let braking = self.rate_gauge(from, from.scaled(-1.0), Some(self.settings.limits.stop_m_s2));
+        let braking = libm::ceil(braking - 1e-9).clamp(0.0, 1e9) as u32;
+        braking.saturating_add(u32::try_from(self.state.average.len()).unwrap_or(u32::MAX))
+    }
+
     /// Nothing left to send: velocity and every sample of the average are zero.
     #[must_use]
     pub fn at_rest(&self) -> bool {

@@ -9,6 +9,7 @@
 pub mod deframe;
 pub mod driver;
 pub mod frame;
+pub mod size;
 
 pub use deframe::Deframer;
 pub use frame::{
