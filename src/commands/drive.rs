@@ -15,7 +15,7 @@ use super::{Exit, fail};
 pub(crate) struct Args {
     /// The base's configuration
     config: PathBuf,
-    /// Wait for ports that are not there yet
+    /// Wait for ports and a gamepad that are not there yet
     #[arg(long)]
     wait: bool,
     /// Play a script in place of a gamepad: lines `seconds,input,value`
@@ -43,10 +43,8 @@ pub(crate) fn run(args: Args) -> Exit {
         Ok(plan) => plan,
         Err(exit) => return exit,
     };
-    for port in &args.port {
-        if let Err(why) = use_port(&mut plan, port) {
-            return fail(Exit::CouldNotRun, why);
-        }
+    if let Err(exit) = super::use_ports(&mut plan, &args.port) {
+        return exit;
     }
     if args.socket.is_some() {
         plan.console.socket = args.socket;
@@ -72,32 +70,6 @@ pub(crate) fn run(args: Args) -> Exit {
         }
         Err(error @ DriveError::HandsOnRealDrivers(_)) => fail(Exit::CouldNotRun, error),
         Err(error) => fail(Exit::Hardware, error),
-    }
-}
-
-/// `PATH`, or `LINK=PATH`.
-fn use_port(plan: &mut gripline::config::Plan, given: &str) -> Result<(), String> {
-    let (name, path) = match given.split_once('=') {
-        Some((name, path)) => (Some(name), path),
-        None => (None, given),
-    };
-    let names: Vec<String> = plan.links.iter().map(|it| it.name.clone()).collect();
-    let at = match name {
-        Some(name) => names.iter().position(|it| *it == name),
-        None if names.len() == 1 => Some(0),
-        None => {
-            return Err(format!(
-                "--port {given}: there are several links; say LINK={given} with one of {}",
-                names.join(", ")
-            ));
-        }
-    };
-    match at.and_then(|at| plan.links.get_mut(at)) {
-        Some(link) => {
-            link.port = PathBuf::from(path);
-            Ok(())
-        }
-        None => Err(format!("--port {given}: there is no such link; known: {}", names.join(", "))),
     }
 }
 

@@ -10,6 +10,7 @@ pub(crate) mod review;
 pub(crate) mod standin;
 pub(crate) mod status;
 pub(crate) mod stop;
+mod target;
 
 use std::fmt::Display;
 use std::io::Write;
@@ -85,32 +86,32 @@ pub(crate) fn read_plan(path: &std::path::Path) -> Result<gripline::config::Plan
     }
 }
 
-/// The console's socket: of a given configuration, else the only one there is in the runtime folders.
-pub(crate) fn find_socket(config: Option<&std::path::Path>) -> Result<std::path::PathBuf, Exit> {
-    if let Some(path) = config {
-        return read_plan(path).map(|plan| gripline::daemon::socket_path(&plan));
+/// Uses other devices than the configuration's: `PATH`, or `LINK=PATH` where there are several links.
+pub(crate) fn use_ports(plan: &mut gripline::config::Plan, given: &[String]) -> Result<(), Exit> {
+    for given in given {
+        use_port(plan, given).map_err(|why| fail(Exit::CouldNotRun, why))?;
     }
-    let mut found: Vec<std::path::PathBuf> = Vec::new();
-    let runtime = std::env::var_os("XDG_RUNTIME_DIR").map(std::path::PathBuf::from);
-    for dir in runtime.into_iter().chain(["/run/gripline".into(), std::env::temp_dir()]) {
-        let entries = std::fs::read_dir(dir).into_iter().flatten().flatten();
-        found.extend(entries.map(|it| it.path()).filter(|it| {
-            it.file_name()
-                .and_then(|it| it.to_str())
-                .is_some_and(|it| it.starts_with("gripline-") && it.ends_with(".sock"))
-        }));
-    }
-    found.sort();
-    found.dedup();
-    match found.as_slice() {
-        [one] => Ok(one.clone()),
-        [] => Err(fail(
-            Exit::Failed,
-            "no drive is running here; start `gripline drive CONFIG`, or give its CONFIG",
-        )),
-        _ => Err(fail(
-            Exit::CouldNotRun,
-            "several drives are running here; give the CONFIG of the one that is meant",
-        )),
-    }
+    Ok(())
+}
+
+fn use_port(plan: &mut gripline::config::Plan, given: &str) -> Result<(), String> {
+    let (name, path) = match given.split_once('=') {
+        Some((name, path)) => (Some(name), path),
+        None => (None, given),
+    };
+    let names = plan.links.iter().map(|it| it.name.as_str()).collect::<Vec<_>>().join(", ");
+    let link = match (name, plan.links.as_mut_slice()) {
+        (None, [one]) => one,
+        (None, _) => {
+            return Err(format!(
+                "--port {given}: there are several links; say LINK={given} with one of {names}"
+            ));
+        }
+        (Some(name), links) => links
+            .iter_mut()
+            .find(|it| it.name == name)
+            .ok_or_else(|| format!("--port {given}: there is no link '{name}'; known: {names}"))?,
+    };
+    link.port = path.into();
+    Ok(())
 }

@@ -1,18 +1,17 @@
 //! `gripline reset`: ends a trip from the console, where that is allowed.
 
-use std::path::PathBuf;
 use std::time::Duration;
 
-use gripline::daemon::console;
 use serde_json::{Value, json};
 
+use super::target::Target;
 use super::{Exit, fail, print};
 
 /// End a trip from the console, where the configuration allows it; never moves anything.
 #[derive(clap::Args)]
 pub(crate) struct Args {
-    /// The base's configuration; may be left out where one drive is running
-    config: Option<PathBuf>,
+    #[command(flatten)]
+    target: Target,
     /// You see the base and nobody is near it
     #[arg(long)]
     in_sight: bool,
@@ -22,19 +21,10 @@ pub(crate) struct Args {
 }
 
 pub(crate) fn run(args: Args) -> Exit {
-    let socket = match super::find_socket(args.config.as_deref()) {
-        Ok(socket) => socket,
-        Err(exit) => return exit,
-    };
     let request = json!({ "ask": "reset", "in_sight": args.in_sight });
-    let answer = match console::ask(&socket, &request, Duration::from_secs(3)) {
+    let answer = match args.target.ask(&request, Duration::from_secs(3)) {
         Ok(answer) => answer,
-        Err(error) => {
-            return fail(
-                Exit::Failed,
-                format_args!("no drive answers at {}: {error}; start `gripline drive`", socket.display()),
-            );
-        }
+        Err(exit) => return exit,
     };
     if args.json {
         print(format_args!("{answer:#}\n"));

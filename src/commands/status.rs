@@ -1,44 +1,33 @@
 //! `gripline status`: how a running drive stands.
 
-use std::path::PathBuf;
 use std::time::Duration;
 
-use gripline::daemon::console;
 use serde_json::{Value, json};
 
+use super::target::Target;
 use super::{Exit, fail, print};
 
 /// Tell how a running drive stands.
 #[derive(clap::Args)]
 pub(crate) struct Args {
-    /// The base's configuration; may be left out where one drive is running
-    config: Option<PathBuf>,
+    #[command(flatten)]
+    target: Target,
     /// As JSON
     #[arg(long)]
     json: bool,
 }
 
 pub(crate) fn run(args: Args) -> Exit {
-    let socket = match super::find_socket(args.config.as_deref()) {
-        Ok(socket) => socket,
+    let answer = match args.target.ask(&json!({ "ask": "status" }), Duration::from_secs(1)) {
+        Ok(answer) => answer,
         Err(exit) => return exit,
     };
-    let answer = match console::ask(&socket, &json!({ "ask": "status" }), Duration::from_secs(1)) {
-        Ok(answer) => answer,
-        Err(error) => {
-            return fail(
-                Exit::Failed,
-                format_args!(
-                    "no drive answers at {}: {error}; start `gripline drive`, or stop a hung one by `gripline stop CONFIG`",
-                    socket.display()
-                ),
-            );
-        }
-    };
+    let error = answer.get("error").and_then(Value::as_str);
     if args.json {
-        return print(format_args!("{answer:#}\n"));
+        let printed = print(format_args!("{answer:#}\n"));
+        return if error.is_some() { Exit::Failed } else { printed };
     }
-    if let Some(error) = answer.get("error").and_then(Value::as_str) {
+    if let Some(error) = error {
         return fail(Exit::Failed, error);
     }
     let text = |key: &str| answer.get(key).and_then(Value::as_str).unwrap_or("").to_owned();

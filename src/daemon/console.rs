@@ -1,270 +1,204 @@
-//! The console: a socket on this machine for status, stop and reset. One line of JSON each way.
+//! The console: a local socket for status, stop and reset. One line of JSON each way:
+//! `{"ask":"status"}`, `{"ask":"stop"}`, `{"ask":"reset","in_sight":true}`.
 //!
-//! `{"ask":"status"}`, `{"ask":"stop"}`, `{"ask":"reset","in_sight":true}`. A client that floods, never reads or sends
-//! half a line costs the tick nothing: this thread serves a few clients, a line at a time, and drops the rest.
+//! One thread serves all clients and waits for none of them. A client that floods gets its turn and no more; one that
+//! never reads or sends half a line is dropped; when there are too many, the one that has been silent longest goes, so
+//! that a stop is always heard. None of it reaches the tick.
 
 use std::io::{self, Read, Write};
-use std::os::unix::fs::PermissionsExt;
-use std::os::unix::net::{UnixListener, UnixStream};
-use std::path::{Path, PathBuf};
+use std::os::fd::AsFd;
+use std::os::unix::net::UnixStream;
 use std::sync::Arc;
-use std::sync::atomic::{AtomicBool, Ordering};
-use std::time::Duration;
 
-use crossbeam_channel::Receiver;
-use serde_json::{Value, json};
+use serde_json::Value;
 
-use super::gather::Asked;
-use crate::config::Plan;
-use crate::core::io::{Outputs, Phase, Puller};
-use crate::core::words;
-use crate::link::StopLine;
-use crate::record::Recorder;
-use crate::shaping::Frame;
-use crate::sys::clock;
+use super::answers::{Answer, Pending, Shared};
+use super::socket::Socket;
+use crate::sys::{clock, socket};
+use crate::units::Mono;
 
-/// A client that says nothing for so long is dropped.
-const PATIENCE: Duration = Duration::from_millis(500);
+/// As many clients at a time.
+const CLIENTS: usize = 16;
+/// So many are let in at one turn, so that each is heard before a flood of newcomers can push it out.
+const NEW_AT_A_TURN: usize = 4;
 /// The longest line of a client.
 const LONGEST: usize = 1024;
-
-/// Why there is no console.
-#[derive(Debug, thiserror::Error)]
-pub enum ConsoleError {
-    /// Another drive answers there.
-    #[error("a drive of this base is already running (console {path}{}): end it first", .pid.map_or_else(String::new, |it| format!(", process {it}")))]
-    Taken {
-        /// The socket.
-        path: PathBuf,
-        /// Its process.
-        pid: Option<u64>,
-    },
-    /// The socket cannot be made.
-    #[error("cannot make the console's socket {path}: {source}; correct `socket` of [console]")]
-    Socket {
-        /// The socket.
-        path: PathBuf,
-        /// Why.
-        source: io::Error,
-    },
-}
-
-/// Where the console of a base is: the plan's own path, else in the runtime folder of the service or of the user.
-#[must_use]
-pub fn socket_path(plan: &Plan) -> PathBuf {
-    if let Some(path) = &plan.console.socket {
-        return path.clone();
-    }
-    let name: String =
-        plan.name.chars().map(|it| if it.is_ascii_alphanumeric() { it } else { '-' }).collect();
-    let name = format!("gripline-{name}.sock");
-    for variable in ["RUNTIME_DIRECTORY", "XDG_RUNTIME_DIR"] {
-        if let Some(dir) = std::env::var_os(variable).filter(|it| !it.is_empty()) {
-            return Path::new(&dir).join(&name);
-        }
-    }
-    let service = Path::new("/run/gripline");
-    if service.is_dir() { service.join(name) } else { std::env::temp_dir().join(name) }
-}
-
-/// Makes the socket, for this user and group alone. One that nobody answers at any more is taken over.
-///
-/// # Errors
-/// When another drive answers there, or the socket cannot be made.
-pub(super) fn bind(path: &Path) -> Result<UnixListener, ConsoleError> {
-    let failed = |source| ConsoleError::Socket { path: path.into(), source };
-    match UnixStream::connect(path) {
-        Ok(_) => {
-            let pid = ask(path, &json!({ "ask": "status" }), Duration::from_millis(500))
-                .ok()
-                .and_then(|it| it.get("pid").and_then(Value::as_u64));
-            return Err(ConsoleError::Taken { path: path.into(), pid });
-        }
-        Err(error) if error.kind() == io::ErrorKind::ConnectionRefused => {
-            std::fs::remove_file(path).map_err(failed)?;
-        }
-        Err(error) if error.kind() == io::ErrorKind::NotFound => {}
-        Err(error) => return Err(failed(error)),
-    }
-    let listener = UnixListener::bind(path).map_err(failed)?;
-    std::fs::set_permissions(path, std::fs::Permissions::from_mode(0o660)).map_err(failed)?;
-    Ok(listener)
-}
-
-/// Takes the socket away at the end.
-pub(super) fn remove(path: &Path) {
-    let _ = std::fs::remove_file(path);
-}
-
-/// What the console needs of the drive.
-pub(super) struct Shared {
-    pub(super) plan: Arc<Plan>,
-    pub(super) stop: StopLine,
-    pub(super) asked: Arc<Asked>,
-    pub(super) want: Arc<AtomicBool>,
-    pub(super) shown: Receiver<Outputs>,
-    pub(super) run: PathBuf,
-    pub(super) failures: Recorder,
-}
+/// Half a line, or an answer that is not read, is waited for so long.
+const PATIENCE_NS: u64 = 2_000_000_000;
+/// So often an answer that waits for the tick is looked after.
+const PENDING_MS: i32 = 10;
+/// So often clients are looked after.
+const LOOK_MS: i32 = 500;
 
 /// Serves until the program ends.
-pub(super) fn start(listener: UnixListener, shared: Shared) -> io::Result<()> {
-    let shared = Arc::new(shared);
-    // Two threads, so that one client that holds its line open does not keep a stop from being heard.
-    for index in 0..SERVERS {
-        let listener = listener.try_clone()?;
-        let shared = Arc::clone(&shared);
-        let thread = std::thread::Builder::new().name(format!("console {index}")).stack_size(256 * 1024);
-        thread.spawn(move || {
-            for client in listener.incoming() {
-                match client {
-                    // Whatever became of it, the next one is served.
-                    Ok(client) => drop(serve(client, &shared)),
-                    Err(_) => clock::sleep_ms(50),
-                }
-            }
-        })?;
-    }
-    Ok(())
-}
-
-/// How many clients are served at a time.
-const SERVERS: usize = 4;
-
-/// One client: lines in, lines out, until it is silent for too long.
-fn serve(mut client: UnixStream, shared: &Shared) -> io::Result<()> {
-    client.set_read_timeout(Some(PATIENCE))?;
-    client.set_write_timeout(Some(PATIENCE))?;
-    let mut line = Vec::new();
-    // A client that floods is dropped after so many lines; it may come again.
-    for _ in 0..100 {
-        if !read_line(&mut client, &mut line)? {
-            return Ok(());
-        }
-        let answer = match serde_json::from_slice::<Value>(&line) {
-            Ok(request) => answer(&request, shared),
-            Err(error) => json!({ "error": format!("not a line of JSON: {error}") }),
-        };
-        client.write_all(format!("{answer}\n").as_bytes())?;
-    }
-    Ok(())
-}
-
-/// One line without its end; false when the client is done. The whole line must come within the patience.
-fn read_line(client: &mut UnixStream, line: &mut Vec<u8>) -> io::Result<bool> {
-    line.clear();
-    let deadline = clock::now().plus_ns(4 * u64::try_from(PATIENCE.as_nanos()).unwrap_or(0));
-    let mut byte = [0];
-    loop {
-        if client.read(&mut byte)? == 0 || line.len() >= LONGEST || clock::now() > deadline {
-            return Ok(false);
-        }
-        if byte == *b"\n" {
-            return Ok(true);
-        }
-        line.extend_from_slice(&byte);
-    }
-}
-
-fn answer(request: &Value, shared: &Shared) -> Value {
-    match request.get("ask").and_then(Value::as_str) {
-        Some("status") => match status(shared) {
-            Some(out) => shown(&out, shared),
-            None => {
-                json!({ "error": "no tick answers; `gripline stop` reaches the drivers all the same", "pid": std::process::id() })
-            }
-        },
-        Some("stop") => {
-            // At once, without waiting for the tick.
-            let pull = shared.stop.pull(Puller::Console);
-            shared.asked.stop.store(true, Ordering::Relaxed);
-            json!({ "done": "stop", "pull": pull.number, "pid": std::process::id() })
-        }
-        Some("reset") => reset(request, shared),
-        Some(_) | None => json!({ "error": "unknown request; ask for \"status\", \"stop\" or \"reset\"" }),
-    }
-}
-
-fn reset(request: &Value, shared: &Shared) -> Value {
-    let before = status(shared);
-    let tripped = before.as_ref().filter(|it| it.phase == Phase::Tripped);
-    let cause = tripped.and_then(|it| it.cause.as_ref()).map(|it| words::cause(it, &shared.plan));
-    if !shared.plan.console.reset {
-        return json!({ "error": "the console may not reset here; reset at the pad, or set `reset = true` in [console]", "cause": cause });
-    }
-    if request.get("in_sight") != Some(&Value::Bool(true)) {
-        return json!({ "error": "a reset is only for somebody who sees the base: say --in-sight", "cause": cause });
-    }
-    if tripped.is_none() {
-        return json!({ "error": "nothing to reset: the base is not tripped" });
-    }
-    shared.asked.reset.store(true, Ordering::Relaxed);
-    // The drivers have half a second to unlatch.
-    for _ in 0..14 {
-        clock::sleep_ms(50);
-        if let Some(out) = status(shared)
-            && out.phase != Phase::Tripped
-        {
-            return json!({ "done": "reset", "cause": cause, "phase": out.phase.name() });
-        }
-    }
-    let wait = status(shared).and_then(|it| it.view.waits_for).map(|it| words::wait(&it, &shared.plan));
-    let why = wait
-        .unwrap_or_else(|| "the stop was asked at the pad or a stop input, so it is reset at the pad".into());
-    json!({ "error": format!("reset refused: {why}"), "cause": cause })
-}
-
-/// Asks the tick how things stand; it answers at its next turn, or not at all.
-fn status(shared: &Shared) -> Option<Outputs> {
-    while shared.shown.try_recv().is_ok() {}
-    shared.want.store(true, Ordering::Relaxed);
-    shared.shown.recv_timeout(Duration::from_millis(150)).ok()
-}
-
-fn shown(out: &Outputs, shared: &Shared) -> Value {
-    let (view, plan) = (&out.view, &shared.plan);
-    let links: Vec<Value> = plan
-        .links
-        .iter()
-        .enumerate()
-        .map(|(index, link)| {
-            let age = view.feedback_age_s.get(index).copied().filter(|it| it.is_finite());
-            json!({ "name": link.name, "feedback_age_s": age, "round_trip_s": view.round_trip_s.get(index) })
-        })
-        .collect();
-    json!({
-        "base": plan.name,
-        "pid": std::process::id(),
-        "phase": out.phase.name(),
-        "cause": out.cause.as_ref().map(|it| words::cause(it, plan)),
-        "cause_code": out.cause.as_ref().map(crate::core::Cause::code),
-        "clears": out.cause.as_ref().map(|it| words::clears(it, plan)),
-        "waits_for": view.waits_for.as_ref().map(|it| words::wait(it, plan)),
-        "frame": match view.frame { Frame::Base => "base", Frame::Room => "room" },
-        "pace": plan.paces.get(usize::from(view.pace)).map(|it| it.name.as_str()),
-        "sent": { "turn_rad_s": view.sent.turn_rad_s, "x_m_s": view.sent.x_m_s, "y_m_s": view.sent.y_m_s },
-        "pose": { "x_m": view.pose.x_m, "y_m": view.pose.y_m, "heading_rad": view.pose.heading_rad },
-        "measured_rad_s": view.measured_rad_s.as_slice(),
-        "skid_rad_s": view.skid_rad_s,
-        "links": links,
-        "run": shared.run.display().to_string(),
-        "record_failures": shared.failures.failures(),
-    })
-}
-
-/// Asks a console one thing, as the commands do.
 ///
 /// # Errors
-/// When nobody answers in time.
-pub fn ask(path: &Path, request: &Value, within: Duration) -> io::Result<Value> {
-    let mut stream = UnixStream::connect(path)?;
-    stream.set_read_timeout(Some(within))?;
-    stream.set_write_timeout(Some(within))?;
-    stream.write_all(format!("{request}\n").as_bytes())?;
-    let mut line = Vec::new();
-    let mut byte = [0];
-    while stream.read(&mut byte)? == 1 && byte != *b"\n" && line.len() < 64 * 1024 {
-        line.extend_from_slice(&byte);
+/// When there can be no thread.
+pub(super) fn start(socket: Socket, shared: Shared) -> io::Result<()> {
+    let thread = std::thread::Builder::new().name("console".into()).stack_size(256 * 1024);
+    thread.spawn(move || Server { socket, shared: Arc::new(shared), clients: Vec::new() }.run())?;
+    Ok(())
+}
+
+struct Server {
+    socket: Socket,
+    shared: Arc<Shared>,
+    clients: Vec<Client>,
+}
+
+impl Server {
+    fn run(&mut self) {
+        loop {
+            let (newcomers, ready) = self.wait();
+            let now = clock::now();
+            for (client, ready) in self.clients.iter_mut().zip(ready) {
+                if ready {
+                    client.turn(now, &self.shared);
+                }
+            }
+            self.clients.retain(|it| !it.is_done(now));
+            if newcomers {
+                self.let_in(now);
+            }
+        }
     }
-    serde_json::from_slice(&line).map_err(io::Error::other)
+
+    /// Whether somebody is at the door, and which clients can go on. Those whose answer waits for the tick are looked
+    /// after at every turn: what they send meanwhile must not wake this thread again and again.
+    fn wait(&self) -> (bool, Vec<bool>) {
+        let wanted = |fd, write| socket::Wanted { fd, write };
+        let mut all = vec![wanted(self.socket.listener.as_fd(), false)];
+        let open = self.clients.iter().filter(|it| it.pending.is_none());
+        all.extend(open.map(|it| wanted(it.stream.as_fd(), !it.out.is_empty())));
+        let timeout_ms = match self.clients.as_slice() {
+            [] => -1,
+            some if some.iter().any(|it| it.pending.is_some()) => PENDING_MS,
+            _ => LOOK_MS,
+        };
+        let mut ready = socket::wait(&all, timeout_ms).into_iter();
+        let newcomers = ready.next().unwrap_or(false);
+        let clients =
+            self.clients.iter().map(|it| it.pending.is_some() || ready.next().unwrap_or(false)).collect();
+        (newcomers, clients)
+    }
+
+    fn let_in(&mut self, now: Mono) {
+        for _ in 0..NEW_AT_A_TURN {
+            let stream = match self.socket.listener.accept() {
+                Ok((stream, _)) => stream,
+                Err(error) if error.kind() == io::ErrorKind::WouldBlock => return,
+                Err(_) => {
+                    // Out of descriptors, perhaps: a client less may help, and this must not spin.
+                    drop_longest_silent(&mut self.clients);
+                    clock::sleep_ms(20);
+                    return;
+                }
+            };
+            if stream.set_nonblocking(true).is_err() {
+                continue;
+            }
+            if self.clients.len() >= CLIENTS {
+                drop_longest_silent(&mut self.clients);
+            }
+            let mut client =
+                Client { stream, line: Vec::new(), out: Vec::new(), last: now, pending: None, gone: false };
+            client.turn(now, &self.shared);
+            self.clients.push(client);
+        }
+    }
+}
+
+fn drop_longest_silent(clients: &mut Vec<Client>) {
+    if let Some((index, _)) = clients.iter().enumerate().min_by_key(|(_, it)| it.last) {
+        clients.swap_remove(index);
+    }
+}
+
+struct Client {
+    stream: UnixStream,
+    /// What has come of a line that is not whole yet; at most [`LONGEST`].
+    line: Vec<u8>,
+    /// What the client has still to read. Nothing more is answered before it has.
+    out: Vec<u8>,
+    /// When it last said a whole line, or came, or read.
+    last: Mono,
+    /// An answer that waits for the tick.
+    pending: Option<Pending>,
+    gone: bool,
+}
+
+impl Client {
+    /// One turn: write what is left, then read a little and answer.
+    fn turn(&mut self, now: Mono, shared: &Shared) {
+        if let Some(pending) = &self.pending {
+            let Some(answer) = pending.look(now, shared) else { return };
+            self.pending = None;
+            self.say(&answer);
+        }
+        self.write(now);
+        if !self.out.is_empty() || self.gone {
+            return;
+        }
+        let mut bytes = [0; LONGEST];
+        match self.stream.read(&mut bytes) {
+            Ok(0) => self.gone = true,
+            Ok(n) => self.hear(bytes.get(..n).unwrap_or(&[]), now, shared),
+            Err(error) => self.gone = !may_go_on(&error),
+        }
+    }
+
+    fn hear(&mut self, bytes: &[u8], now: Mono, shared: &Shared) {
+        for &byte in bytes {
+            if byte != b'\n' {
+                self.line.push(byte);
+                if self.line.len() >= LONGEST {
+                    self.gone = true;
+                    return;
+                }
+                continue;
+            }
+            self.last = now;
+            let line = std::mem::take(&mut self.line);
+            match shared.answer(&line, now) {
+                Answer::Now(answer) => self.say(&answer),
+                // What follows in the same breath is dropped: a client asks one thing at a time.
+                Answer::Later(pending) => {
+                    self.pending = Some(pending);
+                    return;
+                }
+            }
+            if self.out.len() > 64 * LONGEST {
+                return;
+            }
+        }
+        self.write(now);
+    }
+
+    fn say(&mut self, answer: &Value) {
+        self.out.extend_from_slice(format!("{answer}\n").as_bytes());
+    }
+
+    fn write(&mut self, now: Mono) {
+        while !self.out.is_empty() {
+            match self.stream.write(&self.out) {
+                Ok(n) => {
+                    self.out.drain(..n);
+                    self.last = now;
+                }
+                Err(error) => {
+                    self.gone = !may_go_on(&error);
+                    return;
+                }
+            }
+        }
+    }
+
+    fn is_done(&self, now: Mono) -> bool {
+        let owes = !self.line.is_empty() || !self.out.is_empty();
+        self.gone || (owes && now.since_ns(self.last) > PATIENCE_NS)
+    }
+}
+
+fn may_go_on(error: &io::Error) -> bool {
+    matches!(error.kind(), io::ErrorKind::WouldBlock | io::ErrorKind::Interrupted)
 }

@@ -1,13 +1,14 @@
 //! Gathers what a tick sees, without waiting and without allocating.
 
-use std::sync::atomic::{AtomicBool, Ordering};
+use std::sync::atomic::{AtomicBool, AtomicU32, Ordering};
 
 use crossbeam_channel::Receiver;
 
+use crate::config::PadPlan;
 use crate::core::io::{ConsoleInput, Heard, Inputs, LinkInput, PadInput};
 use crate::link::{Line, LinkNews, StopLine};
 use crate::pad::PadFeed;
-use crate::standin::hands::Hands;
+use crate::standin::hands::{Hands, Script};
 use crate::units::Mono;
 use crate::wire::{FromDrivers, flag};
 
@@ -24,15 +25,33 @@ pub(super) struct ScriptedHands {
     pub(super) hands: Hands,
     pub(super) on_stands: bool,
     pub(super) began: Option<Mono>,
+    /// A link whose drivers do not say that they are simulated: the script is over.
+    pub(super) refused: Option<usize>,
+}
+
+impl ScriptedHands {
+    pub(super) fn new(script: Script, plan: &PadPlan, on_stands: bool) -> Self {
+        Self { hands: Hands::new(script, plan), on_stands, began: None, refused: None }
+    }
+
+    /// The script has said that it ends.
+    pub(super) fn ended(&self, now: Mono) -> bool {
+        self.began.is_some_and(|began| self.hands.ended(now.since_s(began)))
+    }
 }
 
 /// What other threads ask of the tick.
 #[derive(Debug, Default)]
 pub(super) struct Asked {
     pub(super) quit: AtomicBool,
+    /// How many signals have asked for the end.
+    pub(super) signals: AtomicU32,
     pub(super) stop: AtomicBool,
     pub(super) reset: AtomicBool,
 }
+
+/// News taken in one tick; far more than a line can carry in it.
+const NEWS_A_TICK: usize = 256;
 
 /// Collects inputs tick by tick.
 pub(super) struct Gather {
@@ -72,7 +91,8 @@ impl Gather {
             link.feedback = None;
             link.status_seen = 0;
         }
-        while let Ok(it) = news.try_recv() {
+        // Bounded, so that a line that never stops talking cannot hold the tick.
+        for it in news.try_iter().take(NEWS_A_TICK) {
             self.take(it, lines);
         }
         for ((link, line), bytes) in self.inputs.links.iter_mut().zip(lines.iter()).zip(&self.frame_bytes) {
@@ -132,16 +152,16 @@ impl Gather {
 
     /// A script plays only on drivers that are known not to move anything, or on stands.
     fn play(&self, script: &mut ScriptedHands, now: Mono) -> PadInput {
-        let may = script.on_stands || self.simulated.iter().all(|it| *it == Some(true));
-        if !may && script.began.is_none() {
+        if !script.on_stands && script.refused.is_none() {
+            script.refused = self.simulated.iter().position(|it| *it == Some(false));
+        }
+        let may =
+            script.on_stands || script.began.is_some() || self.simulated.iter().all(|it| *it == Some(true));
+        if !may || script.refused.is_some() {
+            // As if the pad had been pulled out: nothing starts, and what moves is stopped.
             return PadInput::default();
         }
         let began = *script.began.get_or_insert(now);
         script.hands.at(now.since_s(began), now)
-    }
-
-    /// A link whose drivers are real although a script is to be played on simulated ones.
-    pub(super) fn real_drivers(&self) -> Option<usize> {
-        self.simulated.iter().position(|it| *it == Some(false))
     }
 }

@@ -1,17 +1,25 @@
 //! The running drive: threads, the tick's clock, the sentinel, the console, the service manager. Knows no mathematics:
 //! it carries bytes and time between the world and the core.
 
-pub mod console;
+mod alarms;
+mod answers;
+mod board;
+mod console;
 mod gather;
 mod printer;
 mod run;
 mod sentinel;
+mod service;
+mod socket;
 #[cfg(feature = "test-faults")]
 mod test_faults;
 mod tick;
+mod ticker;
 
-pub use console::{ConsoleError, socket_path};
 pub use run::{DriveError, DriveOptions, Ended, drive};
+pub use socket::{ConsoleError, ask, connect, connect_any};
+
+use alarms::warn;
 
 /// What is said at the start of everything that moves a base.
 pub const CAUTION: &str = "Gripline is not a safety device. Keep a hard-wired emergency stop within reach, try changes with the wheels \

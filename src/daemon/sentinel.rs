@@ -1,13 +1,14 @@
 //! The sentinel watches the tick from outside and pulls the stop line when it dies. It runs one priority above the tick
-//! and is not pinned to its core. It also feeds the service manager's watchdog, as long as ticks come.
+//! and is not pinned to its core. It waits for nobody but the clock.
 
 use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, AtomicU64, Ordering};
 
+use crate::config::Plan;
 use crate::core::io::Puller;
 use crate::link::StopLine;
 use crate::sys::{clock, sched};
-use crate::units::Mono;
+use crate::units::{Mono, s_to_ns};
 
 /// When the tick last finished, and whether the program is ending.
 #[derive(Debug, Default)]
@@ -22,7 +23,8 @@ impl Pulse {
         self.last_ns.store(now.ns(), Ordering::Release);
     }
 
-    fn last(&self) -> Option<Mono> {
+    /// The end of the last tick; `None` before the first.
+    pub(super) fn last(&self) -> Option<Mono> {
         Some(self.last_ns.load(Ordering::Acquire)).filter(|it| *it > 0).map(Mono::from_ns)
     }
 
@@ -31,22 +33,26 @@ impl Pulse {
         self.ending.store(true, Ordering::Release);
     }
 
-    fn ends(&self) -> bool {
+    pub(super) fn ends(&self) -> bool {
         self.ending.load(Ordering::Acquire)
     }
 }
 
 /// Starts the sentinel.
+///
+/// # Errors
+/// When there can be no thread.
 pub(super) fn start(
     pulse: Arc<Pulse>,
     stop: StopLine,
-    late_ns: u64,
-    period_ns: u64,
-    priority: u8,
+    plan: &Plan,
 ) -> std::io::Result<std::thread::JoinHandle<()>> {
+    let late_ns = s_to_ns(plan.guard.late_ms * 1e-3);
+    let period_ns = plan.tick.period_ns();
+    let priority = plan.tick.realtime;
     std::thread::Builder::new().name("sentinel".into()).stack_size(128 * 1024).spawn(move || {
         if priority > 0 {
-            // Without the right to, the tick has already said so.
+            // Without the right to, the tick says so.
             let _ = sched::set_realtime(priority.saturating_add(1).min(99));
         }
         sched::no_timer_slack();
@@ -54,42 +60,25 @@ pub(super) fn start(
     })
 }
 
+/// It looks a little after the moment from which on a tick is late.
+const AFTER_NS: u64 = 100_000;
+
 fn watch(pulse: &Pulse, stop: &StopLine, late_ns: u64, period_ns: u64) {
-    let watchdog_ns =
-        sd_notify::watchdog_enabled().map(|it| u64::try_from(it.as_nanos()).unwrap_or(u64::MAX) / 4);
-    let (mut fed, mut fed_at) = (Mono::default(), clock::now());
     let mut pulled = false;
-    loop {
-        if pulse.ends() {
-            return;
-        }
+    while !pulse.ends() {
         let now = clock::now();
-        let Some(last) = pulse.last() else {
-            // The first tick has not come: nothing can have been sent that moves.
-            clock::sleep_until(now.plus_ns(period_ns));
-            continue;
+        // Before the first tick nothing can have been sent that moves.
+        let late = pulse.last().is_some_and(|last| now.since_ns(last) > late_ns);
+        if late && pulled {
+            stop.repeat();
+        } else if late {
+            stop.pull(Puller::Sentinel);
+        }
+        pulled = late;
+        let next = match pulse.last() {
+            Some(last) if !late => last.plus_ns(late_ns + AFTER_NS),
+            Some(_) | None => now.plus_ns(period_ns),
         };
-        if now.since_ns(last) > late_ns {
-            if pulled {
-                stop.repeat();
-            } else {
-                stop.pull(Puller::Sentinel);
-                pulled = true;
-            }
-            clock::sleep_until(now.plus_ns(period_ns));
-            continue;
-        }
-        pulled = false;
-        if let Some(every) = watchdog_ns
-            && now.since_ns(fed_at) >= every
-            && last != fed
-        {
-            let _ = sd_notify::notify(&[sd_notify::NotifyState::Watchdog]);
-            (fed, fed_at) = (last, now);
-        }
-        // Looks just after the tick would be too late, and often enough for the watchdog.
-        clock::sleep_until(
-            last.plus_ns(late_ns + 100_000).min(now.plus_ns(watchdog_ns.unwrap_or(u64::MAX) / 2)),
-        );
+        clock::sleep_until(next);
     }
 }

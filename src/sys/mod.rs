@@ -5,4 +5,5 @@ pub mod clock;
 pub mod evdev;
 pub mod sched;
 pub mod serial;
+pub mod socket;
 pub mod tty;

@@ -155,6 +155,15 @@ pub fn is_pty(fd: BorrowedFd<'_>) -> bool {
     (136..=143).contains(&libc::major(device))
 }
 
+/// Characters in a line of the terminal on stdout; 80 where it does not say.
+#[must_use]
+pub fn columns() -> usize {
+    let mut size = libc::winsize { ws_row: 0, ws_col: 0, ws_xpixel: 0, ws_ypixel: 0 };
+    // SAFETY: TIOCGWINSZ fills one winsize.
+    let told = unsafe { libc::ioctl(libc::STDOUT_FILENO, libc::TIOCGWINSZ, &raw mut size) } == 0;
+    if told && size.ws_col > 0 { usize::from(size.ws_col) } else { 80 }
+}
+
 /// `struct serial_struct` of linux/serial.h as far as it is needed: 72 bytes on 64-bit machines, `flags` at 16.
 #[repr(C, align(8))]
 struct SerialStruct {
