@@ -101,7 +101,7 @@ fn drives(plan: &gripline::config::Plan) -> Vec<World> {
     troubles
         .into_iter()
         .map(|trouble| {
-            let mut world = World::new(plan.clone()).to_parked();
+            let mut world = World::new(plan.clone()).into_parked();
             world.tap(Buttons::FRAME.with(Buttons::PACE_UP));
             let mut world = world.at_speed(0.8, 0.4, -0.5);
             world.tap(Buttons::FRAME.with(Buttons::ZERO_HEADING));

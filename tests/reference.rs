@@ -220,25 +220,3 @@ fn the_checksum_is_that_of_the_internet_standard() {
         assert!(got == expected || swapped == expected, "{}: {got}", entry["id"]);
     }
 }
-
-/// Worst travel after the last good command (common practice, handbook mechanics): the budget's row "host silent" with
-/// no other delay is the watchdog's part of it.
-#[test]
-fn the_budget_is_that_of_handbook_mechanics() {
-    let (plan, _) = gripline::config::parse(gripline::config::EXAMPLE, "example").unwrap();
-    for row in gripline::core::budget::budget(&plan) {
-        let (Some(ramp_s), Some(total_s), Some(distance_m)) = (row.ramp_s, row.total_s, row.distance_m)
-        else {
-            continue;
-        };
-        let pace = plan.paces[row.pace].pace;
-        let v = pace.travel_m_s + pace.turn_rad_s * (plan.outline_m[0].hypot(plan.outline_m[1]) / 2.0);
-        let a = v / ramp_s;
-        let before = row.detect_s + row.tick_s + row.wire_s + row.driver_s;
-        close(total_s, before + row.smoothing_s + ramp_s, 1.0, row.guard.name());
-        // d = v t + v^2 / (2 a), any handbook.
-        close(distance_m, v * (before + row.smoothing_s / 2.0) + v * v / (2.0 * a), 1.0, row.guard.name());
-        // ISO 13855:2010, S = K T with K = 1600 mm/s (from memory of the standard's own text, confirmed in manuals).
-        close(row.person_m.unwrap(), 1.6 * total_s, 1.0, row.guard.name());
-    }
-}

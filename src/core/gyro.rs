@@ -43,7 +43,7 @@ impl Gyro {
             return (Some(0.0), changed);
         }
         // Before the first standstill its bias is not known.
-        let turned = (self.learnt_s > 0.0).then(|| (rate_rad_s - self.bias_rad_s) * span_s);
+        let turned = (self.learnt_s > 0.0).then_some((rate_rad_s - self.bias_rad_s) * span_s);
         (turned, changed)
     }
 

@@ -93,6 +93,7 @@ pub(super) fn channels(
 }
 
 #[cfg(test)]
+#[expect(clippy::float_cmp, reason = "what comes out is what went in")]
 mod tests {
     use super::*;
 

@@ -123,12 +123,9 @@ impl<F: Fn(Puller)> Thread<F> {
                     self.state.axis(axis, f64::from(value));
                 }
                 // Pads that gilrs has no layout for tell a trigger as an axis, from -1 released.
-                let trigger = match axis {
-                    gilrs::Axis::LeftZ => gilrs::Button::LeftTrigger2,
-                    gilrs::Axis::RightZ => gilrs::Button::RightTrigger2,
-                    _ => return,
-                };
-                if self.gilrs.gamepad(event.id).button_code(trigger).is_none() {
+                if let Some((_, trigger)) = TRIGGER_AXES.into_iter().find(|(it, _)| *it == axis)
+                    && self.gilrs.gamepad(event.id).button_code(trigger).is_none()
+                {
                     self.button(trigger, f64::from(value).midpoint(1.0));
                 }
             }
@@ -214,11 +211,9 @@ impl<F: Fn(Puller)> Thread<F> {
         }
         for button in ALL_BUTTONS {
             // A trigger that is told as an axis, as in `event`.
-            let trigger = match choose::button(button) {
-                gilrs::Button::LeftTrigger2 => pad.axis_code(gilrs::Axis::LeftZ),
-                gilrs::Button::RightTrigger2 => pad.axis_code(gilrs::Axis::RightZ),
-                _ => None,
-            };
+            let meant = choose::button(button);
+            let axis = TRIGGER_AXES.into_iter().find(|(_, it)| *it == meant).map(|(axis, _)| axis);
+            let trigger = axis.and_then(|axis| pad.axis_code(axis));
             let code = pad.button_code(choose::button(button)).or(trigger).map(|it| it.into_u32());
             if let Some(value) = code.and_then(|code| button_value(watch, code)) {
                 self.state.button(button, value, true);
@@ -243,6 +238,10 @@ impl<F: Fn(Puller)> Thread<F> {
         }
     }
 }
+
+/// Axes that stand in for the trigger buttons on pads without a known layout.
+const TRIGGER_AXES: [(gilrs::Axis, gilrs::Button); 2] =
+    [(gilrs::Axis::LeftZ, gilrs::Button::LeftTrigger2), (gilrs::Axis::RightZ, gilrs::Button::RightTrigger2)];
 
 const EV_KEY: u32 = 1;
 const EV_ABS: u32 = 3;

@@ -30,7 +30,7 @@ fn a_whole_drive_goes_where_the_sticks_say() {
 
 #[test]
 fn a_press_off_centre_is_spent_until_released_and_pressed_again() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     world.sticks(0.5, 0.0, 0.0);
     world.hold(1.0);
     world.tick();
@@ -47,7 +47,7 @@ fn a_press_off_centre_is_spent_until_released_and_pressed_again() {
 
 #[test]
 fn a_press_in_stopping_is_spent() {
-    let mut world = World::new(four_mecanum()).to_stopping();
+    let mut world = World::new(four_mecanum()).into_stopping();
     world.hold(1.0);
     world.tick();
     assert!(refused(&world, Request::Press, Wait::PressSpent));
@@ -63,7 +63,7 @@ fn a_press_in_stopping_is_spent() {
 
 #[test]
 fn a_press_that_was_not_seen_released_in_ready_is_spent() {
-    let mut world = World::new(four_mecanum()).to_stopping();
+    let mut world = World::new(four_mecanum()).into_stopping();
     world.hold(1.0);
     world.until(2.0, "standstill", |it| it.phase() == Phase::Ready);
     // Released and pressed again between two ticks: released was never seen in Ready.
@@ -76,7 +76,7 @@ fn a_press_that_was_not_seen_released_in_ready_is_spent() {
 #[test]
 fn ready_is_refused_for_each_reason_and_never_remembered() {
     let refuse = |change: fn(&mut World), wait: Wait| {
-        let mut world = World::new(four_mecanum()).to_parked();
+        let mut world = World::new(four_mecanum()).into_parked();
         change(&mut world);
         world.tick();
         assert_eq!(world.out.view.waits_for, Some(wait));
@@ -96,7 +96,7 @@ fn ready_is_refused_for_each_reason_and_never_remembered() {
     // Held from before: no edge.
     let mut world = World::new(four_mecanum());
     world.pad.down = Buttons::READY;
-    let mut world = world.to_parked();
+    let mut world = world.into_parked();
     world.run_s(0.5);
     assert_eq!(world.phase(), Phase::Parked);
 }
@@ -104,12 +104,12 @@ fn ready_is_refused_for_each_reason_and_never_remembered() {
 #[test]
 fn ready_left_alone_parks_and_one_that_is_touched_does_not() {
     let plan = || mecanum_with("[guard]\nready_idle_s = 1.0");
-    let mut world = World::new(plan()).to_ready();
+    let mut world = World::new(plan()).into_ready();
     world.run_s(0.97);
     assert_eq!(world.phase(), Phase::Ready);
     world.run_s(0.03);
     assert_eq!(world.phase(), Phase::Parked);
-    let mut world = World::new(plan()).to_ready();
+    let mut world = World::new(plan()).into_ready();
     for _ in 0..5 {
         world.run_s(0.7);
         world.sticks(0.3, 0.0, 0.0);
@@ -158,7 +158,7 @@ fn a_trip_is_left_by_release_reset_ready_press_in_that_order() {
 
 #[test]
 fn reset_must_be_held_from_an_edge_in_tripped() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     world.press(Buttons::RESET);
     world.tick();
     world.console.stop = true;
@@ -179,7 +179,7 @@ fn reset_must_be_held_from_an_edge_in_tripped() {
 
 #[test]
 fn reset_waits_until_the_cause_is_gone() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     world.boards[0].stop_input_open = true;
     world.run_s(0.5);
     world.reset();
@@ -190,7 +190,7 @@ fn reset_waits_until_the_cause_is_gone() {
     world.reset();
     assert_eq!(world.phase(), Phase::Parked);
 
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     world.pad.present = false;
     world.run_s(0.5);
     assert_eq!(world.out.view.waits_for, Some(Wait::NoPad));
@@ -202,7 +202,7 @@ fn reset_waits_until_the_cause_is_gone() {
 #[test]
 fn a_stop_during_a_reset_wins_over_it() {
     for stop in [Buttons::STOP, Buttons::default()] {
-        let mut world = World::new(four_mecanum()).to_tripped();
+        let mut world = World::new(four_mecanum()).into_tripped();
         world.boards[0].deaf_to_clear = true;
         world.press(Buttons::RESET);
         world.run_s(1.1);
@@ -223,7 +223,7 @@ fn a_stop_during_a_reset_wins_over_it() {
 
 #[test]
 fn the_console_resets_what_it_may() {
-    let mut world = World::new(four_mecanum()).to_tripped();
+    let mut world = World::new(four_mecanum()).into_tripped();
     world.console.reset = true;
     world.run_s(0.2);
     assert_eq!(world.phase(), Phase::Parked);
@@ -244,7 +244,7 @@ fn the_console_resets_what_it_may() {
         },
     ];
     for stop in at_pad {
-        let mut world = World::new(four_mecanum()).to_ready();
+        let mut world = World::new(four_mecanum()).into_ready();
         stop(&mut world);
         world.run_s(0.5);
         world.console.reset = true;
@@ -258,7 +258,7 @@ fn the_console_resets_what_it_may() {
 
 #[test]
 fn a_reset_that_one_link_does_not_follow_stops_again_and_names_it() {
-    let mut world = World::new(four_omni()).to_tripped();
+    let mut world = World::new(four_omni()).into_tripped();
     world.boards[1].deaf_to_clear = true;
     world.events.clear();
     world.press(Buttons::RESET);
@@ -319,7 +319,7 @@ fn the_orderly_end_does_not_wait_for_ever_for_a_dead_link() {
 
 #[test]
 fn pace_frame_and_heading_buttons_do_what_they_say() {
-    let mut world = World::new(four_mecanum()).to_parked();
+    let mut world = World::new(four_mecanum()).into_parked();
     world.tap(Buttons::PACE_UP);
     assert_eq!(world.out.view.pace, 1);
     world.events.clear();
@@ -355,24 +355,4 @@ fn pace_frame_and_heading_buttons_do_what_they_say() {
     world.tap(Buttons::PACE_DOWN);
     world.tap(Buttons::FRAME);
     assert_eq!((world.out.view.pace, world.out.view.frame), (1, Frame::Room));
-}
-
-#[test]
-fn each_line_of_words_names_what_the_plan_calls_it() {
-    use gripline::core::words;
-    let plan = four_omni();
-    let cause = Cause::FeedbackQuiet { link: 1, age_ms: 104 };
-    assert_eq!(words::cause(&cause, &plan), "no feedback from link \"right\" for 104 ms (limit 100 ms)");
-    assert!(words::clears(&cause, &plan).contains("hold Select for 1 s"));
-    let runaway = Cause::Runaway { wheel: 2, measured_rad_s: 1.5 };
-    assert_eq!(
-        words::cause(&runaway, &plan),
-        "wheel \"rear right\" runs away: told to stand, measured 1.50 rad/s (limit 1.00 rad/s); torque taken off"
-    );
-    let mut world = World::new(four_omni()).to_tripped();
-    world.reset();
-    for event in &world.events {
-        let line = words::event(event, &plan);
-        assert!(!line.is_empty() && !line.contains('\n'), "{line}");
-    }
 }

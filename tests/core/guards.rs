@@ -40,7 +40,7 @@ fn release_ramps_without_a_latch_and_ends_in_ready() {
 
 #[test]
 fn a_trigger_between_its_thresholds_neither_presses_nor_releases() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     world.hold(0.59);
     world.tick();
     assert_eq!(world.phase(), Phase::Ready);
@@ -82,7 +82,7 @@ fn a_stop_asked_takes_the_torque_off_at_once_where_the_key_says_so() {
 #[test]
 fn squeezing_the_hold_control_through_is_a_stop_and_coming_back_no_press() {
     let plan = mecanum_with("[pad]\nhold_on = 0.3\nhold_off = 0.2\nhold_squeeze = 0.8");
-    let mut world = World::new(plan).to_ready();
+    let mut world = World::new(plan).into_ready();
     world.hold(0.5);
     world.tick();
     assert_eq!(world.phase(), Phase::Driving);
@@ -285,7 +285,7 @@ fn a_clock_that_falls_is_a_restart_and_one_that_wraps_is_not() {
     for up_us in [10_000_000, 2_000_000_000, 3_000_000_000, 4_200_000_000] {
         let mut world = World::new(four_mecanum());
         world.boards[0].clock_ahead_us = up_us;
-        let mut world = world.to_ready();
+        let mut world = world.into_ready();
         let mut inputs = world.see();
         let feedback = &mut inputs.links[0].feedback.as_mut().unwrap().feedback;
         feedback.clock_us = 5_000;
@@ -294,7 +294,7 @@ fn a_clock_that_falls_is_a_restart_and_one_that_wraps_is_not() {
     }
     let mut world = World::new(four_mecanum());
     world.boards[0].clock_ahead_us = (1 << 32) - 3_000_000;
-    let mut world = world.to_ready();
+    let mut world = world.into_ready();
     let before = world.inputs.links[0].feedback.as_ref().unwrap().feedback.clock_us;
     world.run_s(4.0);
     let after = world.inputs.links[0].feedback.as_ref().unwrap().feedback.clock_us;
@@ -304,7 +304,7 @@ fn a_clock_that_falls_is_a_restart_and_one_that_wraps_is_not() {
 
 #[test]
 fn an_identity_that_changes_trips() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     let mut inputs = world.see();
     let mut identity = world.boards[0].identity.clone();
     identity.silence_ms += 1;
@@ -347,7 +347,7 @@ fn not_following_trips_after_half_a_second_above_a_tenth_of_full_speed() {
 fn sound_wheels_that_lag_follow_through_every_ramp() {
     let mut world = World::new(four_mecanum());
     world.boards[0].lag_s = 0.08;
-    let mut world = world.to_driving();
+    let mut world = world.into_driving();
     world.press(Buttons::PACE_UP);
     world.let_go(Buttons::PACE_UP);
     for (x, y, turn) in
@@ -361,7 +361,7 @@ fn sound_wheels_that_lag_follow_through_every_ramp() {
 
 #[test]
 fn a_wheel_that_does_not_slow_down_loses_its_torque() {
-    let mut world = World::new(four_mecanum()).to_driving();
+    let mut world = World::new(four_mecanum()).into_driving();
     world.tap(Buttons::PACE_UP);
     world.sticks(1.0, 0.0, 0.0);
     world.run_s(2.0);
@@ -387,7 +387,7 @@ fn a_wheel_that_does_not_slow_down_loses_its_torque() {
 fn wheels_that_slow_down_with_a_lag_are_not_taken_for_stuck() {
     let mut world = World::new(four_mecanum());
     world.boards[0].lag_s = 0.08;
-    let mut world = world.to_driving();
+    let mut world = world.into_driving();
     world.tap(Buttons::PACE_UP);
     world.sticks(1.0, 0.0, 0.5);
     world.run_s(2.0);
@@ -398,7 +398,7 @@ fn wheels_that_slow_down_with_a_lag_are_not_taken_for_stuck() {
 
 #[test]
 fn runaway_takes_the_torque_off_once_a_wheel_goes_on_turning() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     world.run_s(1.0);
     world.boards[0].stuck[1] = Some(FULL_COUNTS * 0.049);
     world.run_s(3.0);
@@ -416,7 +416,7 @@ fn runaway_takes_the_torque_off_once_a_wheel_goes_on_turning() {
 
 #[test]
 fn runaway_waits_until_the_command_has_been_zero_for_long_enough() {
-    let mut world = World::new(four_mecanum()).to_ready();
+    let mut world = World::new(four_mecanum()).into_ready();
     // Fresh in Ready: 3 ticks. The wheel turns from the start.
     world.boards[0].stuck[0] = Some(-FULL_COUNTS * 0.2);
     let ready_since = world.now_s() - 3.0 * world.period_s();
@@ -500,7 +500,7 @@ fn three_wheels_never_skid() {
     world.boards[0].report_offset = vec![20_000.0, -9_000.0, 15_000.0];
     world.run_s(3.0);
     assert_eq!(world.phase(), Phase::Driving);
-    assert_eq!(world.tape.iter().map(|(_, out)| out.view.skid_rad_s).fold(0.0, f64::max) < 1e-9, true);
+    assert!(world.tape.iter().all(|(_, out)| out.view.skid_rad_s < 1e-9));
 }
 
 #[test]
@@ -520,7 +520,7 @@ fn a_stop_without_standstill_trips_after_its_ramp_and_margin() {
 #[test]
 fn standstill_is_two_percent_for_a_tenth_of_a_second() {
     for (share, reaches) in [(0.0199, true), (0.0201, false)] {
-        let mut world = World::new(four_mecanum()).to_stopping();
+        let mut world = World::new(four_mecanum()).into_stopping();
         world.boards[0].report_offset[0] = FULL_COUNTS * share;
         world.run_s(0.7);
         assert_eq!(world.phase() == Phase::Ready, reaches, "{share}");

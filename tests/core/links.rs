@@ -108,7 +108,7 @@ fn frames_carry_the_ramp_of_the_present_speed() {
     let turning = World::new(four_mecanum()).at_speed(0.0, 0.0, 1.0);
     // 0.6 rad/s at 4 rad/s^2.
     assert_eq!(turning.out.stop_ramp_ms, 150);
-    let standing = World::new(four_mecanum()).to_ready();
+    let standing = World::new(four_mecanum()).into_ready();
     assert_eq!(standing.out.stop_ramp_ms, 1, "0 would take the torque off at once");
 }
 
@@ -138,7 +138,7 @@ fn sequences_go_on_by_one_a_frame_and_stops_fit_in() {
 
 #[test]
 fn nothing_is_sent_while_more_than_one_frame_is_unsent() {
-    let mut world = World::new(patient_drivers()).to_ready();
+    let mut world = World::new(patient_drivers()).into_ready();
     for (unsent, sends) in [(0, 1), (1, 1), (2, 0), (9, 0)] {
         world.boards[0].unsent = Some(unsent);
         world.tick();
@@ -154,7 +154,7 @@ fn nothing_is_sent_while_more_than_one_frame_is_unsent() {
 fn without_a_count_unacknowledged_frames_hold_sending_back_but_never_starve_the_link() {
     let mut world = World::new(patient_drivers());
     world.boards[0].unsent = None;
-    let mut world = world.to_ready();
+    let mut world = world.into_ready();
     for _ in 0..100 {
         world.tick();
         assert_eq!(drives(&world, 0), 1, "a link that answers gets one a tick");
@@ -176,7 +176,7 @@ fn without_a_count_unacknowledged_frames_hold_sending_back_but_never_starve_the_
 
 #[test]
 fn round_trips_and_ages_are_shown() {
-    let world = World::new(four_mecanum()).to_ready();
+    let world = World::new(four_mecanum()).into_ready();
     assert!(world.out.view.round_trip_s[0] > 0.0 && world.out.view.round_trip_s[0] <= 0.005);
     assert!(world.out.view.feedback_age_s[0] <= 0.005);
     let mut world = World::new(four_mecanum());
@@ -232,7 +232,7 @@ fn heading_comes_from_the_gyro_less_its_bias_and_from_the_wheels_without_it() {
     let mut world = World::new(four_omni());
     // A bias of 41 counts, 0.02 rad/s.
     world.boards.iter_mut().for_each(|it| it.yaw_rate = Some(41));
-    let mut world = world.to_parked();
+    let mut world = world.into_parked();
     assert!(world.told(|it| *it == Event::HeadingFromGyro(true)));
     world.run_s(3.0);
     assert!(world.out.view.pose.heading_rad.abs() < 1e-6, "standing");

@@ -1,6 +1,6 @@
 //! The core as a whole, in simulated time.
 
-#![expect(clippy::unwrap_used, clippy::panic, clippy::float_cmp, reason = "tests: a surprise is a failure")]
+#![expect(clippy::unwrap_used, clippy::panic, reason = "tests: a surprise is a failure")]
 
 mod drive;
 mod guards;
@@ -8,4 +8,5 @@ mod links;
 mod phases;
 mod replay;
 mod total;
+mod words;
 mod world;

@@ -201,10 +201,16 @@ impl Node {
                 (self.boot, self.latched) = (self.boot + 1, false);
             }
             Wrong::Sentinel => self.pull(Puller::Sentinel),
-            _ => {}
-        }
-        if it.wrong == Wrong::PortGone {
-            self.openings += 1;
+            Wrong::PortGone => self.openings += 1,
+            Wrong::Nothing
+            | Wrong::Mute
+            | Wrong::Deaf
+            | Wrong::Fault
+            | Wrong::StopInput
+            | Wrong::Late
+            | Wrong::Turning
+            | Wrong::ClearRefused
+            | Wrong::StopLost => {}
         }
         let hold = match it.hold {
             Hold::Off => 0.0,

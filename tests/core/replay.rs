@@ -7,7 +7,7 @@ use crate::world::{World, four_mecanum, four_omni};
 
 /// A drive with a bit of everything.
 fn tape(plan: gripline::config::Plan) -> Vec<(Inputs, Outputs)> {
-    let mut world = World::new(plan).to_parked();
+    let mut world = World::new(plan).into_parked();
     world.tap(Buttons::FRAME);
     let mut world = world.at_speed(0.8, 0.3, 0.6);
     world.tap(Buttons::PACE_UP);

@@ -397,7 +397,7 @@ impl World {
         self.pad.sticks = Sticks { x, y, turn };
     }
 
-    pub(crate) fn to_parked(mut self) -> Self {
+    pub(crate) fn into_parked(mut self) -> Self {
         self.until(2.0, "nothing stands against Ready", |it| {
             it.phase() == Phase::Parked && it.out.view.waits_for.is_none() && !it.tape.is_empty()
         });
@@ -405,16 +405,16 @@ impl World {
         self
     }
 
-    pub(crate) fn to_ready(mut self) -> Self {
-        self = self.to_parked();
+    pub(crate) fn into_ready(mut self) -> Self {
+        self = self.into_parked();
         self.tap(Buttons::READY);
         assert_eq!(self.phase(), Phase::Ready, "{:?}", self.out);
         self.ticks(3);
         self
     }
 
-    pub(crate) fn to_driving(mut self) -> Self {
-        self = self.to_ready();
+    pub(crate) fn into_driving(mut self) -> Self {
+        self = self.into_ready();
         self.hold(1.0);
         self.tick();
         assert_eq!(self.phase(), Phase::Driving, "{:?}", self.out);
@@ -423,14 +423,14 @@ impl World {
 
     /// Driving with these sticks until the speed has settled.
     pub(crate) fn at_speed(mut self, x: f64, y: f64, turn: f64) -> Self {
-        self = self.to_driving();
+        self = self.into_driving();
         self.sticks(x, y, turn);
         self.run_s(1.5);
         assert_eq!(self.phase(), Phase::Driving, "{:?}", self.out);
         self
     }
 
-    pub(crate) fn to_stopping(mut self) -> Self {
+    pub(crate) fn into_stopping(mut self) -> Self {
         self = self.at_speed(1.0, 0.0, 0.0);
         self.hold(0.0);
         self.sticks(0.0, 0.0, 0.0);
@@ -440,8 +440,8 @@ impl World {
     }
 
     /// Tripped by the console from Ready, latched and at rest.
-    pub(crate) fn to_tripped(mut self) -> Self {
-        self = self.to_ready();
+    pub(crate) fn into_tripped(mut self) -> Self {
+        self = self.into_ready();
         self.console.stop = true;
         self.tick();
         assert_eq!(self.phase(), Phase::Tripped);
@@ -452,11 +452,11 @@ impl World {
     pub(crate) fn in_phase(plan: Plan, phase: Phase) -> Self {
         let world = Self::new(plan);
         match phase {
-            Phase::Parked => world.to_parked(),
-            Phase::Ready => world.to_ready(),
+            Phase::Parked => world.into_parked(),
+            Phase::Ready => world.into_ready(),
             Phase::Driving => world.at_speed(1.0, 0.0, 0.0),
-            Phase::Stopping => world.to_stopping(),
-            Phase::Tripped => world.to_tripped(),
+            Phase::Stopping => world.into_stopping(),
+            Phase::Tripped => world.into_tripped(),
         }
     }
 
