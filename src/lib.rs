@@ -4,8 +4,8 @@
 //! file, thread, lock or random source, and cannot fail. [`wire`] turns bytes into values and back and knows nothing
 //! of ports. The shell ([`daemon`], [`pad`], [`link`], [`record`]) owns every file descriptor and every sleep.
 //!
-//! Modules may use those below them in this list, never those above: `review`, `rehearse`, `daemon`, `pad` / `link` /
-//! `record`, `standin`, `core`, `config`, `shaping`, `base`, `wire`, `units`; `sys` holds the system calls that have
+//! Modules may use those below them in this list, never those above: `check`, `review`, `rehearse`, `daemon`, `pad` /
+//! `link` / `record`, `standin`, `core`, `config`, `shaping`, `base`, `wire`, `units`; `sys` holds the system calls that have
 //! no safe wrapper and may be used by the shell alone.
 
 pub mod base;

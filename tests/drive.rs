@@ -407,7 +407,7 @@ fn drivers_that_share_no_code_are_driven_stopped_and_reset() {
     let mut drive = peer.drive(&bench, &bench.hands(&script), &["--on-stands"]);
     drive.says("answers as configured");
     drive.says("Ready -> Driving");
-    drive.says("STOPPED: stop button pressed");
+    drive.says("STOPPED: stop asked at the pad");
     drive.says("Tripped -> Parked");
     assert_eq!(drive.ends().code(), Some(0));
     peer.told("quit");

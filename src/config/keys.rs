@@ -1,6 +1,8 @@
 //! Every key there is: one row each, with its unit, range, default and one line of help. The parser reads ranges and
 //! defaults from here and nowhere else, and the printed reference is this table.
 
+pub use super::reference::reference;
+
 /// What a value may be.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub enum Kind {
@@ -483,32 +485,4 @@ impl Kind {
             Self::Axis => "an axis by gilrs' name, \"-\" before it turns its sign".into(),
         }
     }
-}
-
-/// The configuration reference: every key with unit, range, default and help.
-#[must_use]
-pub fn reference() -> String {
-    let mut text = String::from("# Every key of a configuration. Keys without a default must be given.\n");
-    for (table, _, help) in TABLES {
-        text += &format!("\n{}  # {help}\n", header(table));
-        for key in KEYS.iter().filter(|it| it.table == *table) {
-            let default = match (key.default, key.kind) {
-                (None, _) => "must be given".into(),
-                (Some(""), Kind::Text(_)) => "default \"\"".into(),
-                (Some(""), _) => "may be left out".into(),
-                (Some(it), Kind::Word(_) | Kind::Button | Kind::Axis) => format!("default \"{it}\""),
-                (Some(it), _) => format!("default {it}"),
-            };
-            let unit = if key.unit.is_empty() { String::new() } else { format!(" {}", key.unit) };
-            text += &format!(
-                "  {:<20} {}{unit}; {default}\n  {:<20}   {}\n",
-                key.name,
-                key.kind.range(),
-                "",
-                key.help
-            );
-        }
-    }
-    text += &format!("\nButtons: {}\nAxes: {}\n", BUTTONS.join(", "), AXES.join(", "));
-    text
 }

@@ -6,6 +6,7 @@ mod mistake;
 mod parse;
 pub mod plan;
 mod reader;
+mod reference;
 
 pub use mistake::Mistake;
 pub use parse::{ConfigError, load, parse, wheels};

@@ -193,38 +193,45 @@ pub(in crate::config) fn times(
             );
         }
     }
-    let oldest = read(links)
-        .map(|(link, section)| (sound_age_ms(link, period_ms), link, section))
-        .max_by(|a, b| a.0.total_cmp(&b.0));
-    let Some((least_ms, link, section)) = oldest else { return };
-    for (name, value_ms) in
-        [("feedback_quiet_ms", guard.feedback_quiet_ms), ("not_heard_ms", guard.not_heard_ms)]
-    {
-        if value_ms < least_ms {
-            let (at, by) = if guard_section.given(name) {
-                (guard_section.at(name), "")
-            } else {
-                (section.at("latency_ms"), " (the default)")
-            };
-            notes.wrong(
-                &at,
-                format!(
-                    "`{name}` = {value_ms}{by} would trip on a sound line: on link \"{}\" an answer can be {:.0} ms old (three ticks \
-                     of {period_ms:.1} ms, a frame each way at {} bit/s, `latency_ms` = {}); raise the one or lower the others",
-                    link.name,
-                    libm::ceil(least_ms),
-                    link.baud,
-                    link.latency_ms
-                ),
-            );
-        }
+    for (name, value_ms, oldest_ms) in [
+        ("feedback_quiet_ms", guard.feedback_quiet_ms, feedback_age_ms as fn(&LinkPlan, f64) -> f64),
+        ("not_heard_ms", guard.not_heard_ms, heard_age_ms),
+    ] {
+        let oldest = read(links)
+            .map(|(link, section)| (oldest_ms(link, period_ms), link, section))
+            .max_by(|a, b| a.0.total_cmp(&b.0));
+        let Some((least_ms, link, section)) = oldest.filter(|it| value_ms < it.0) else { continue };
+        let (at, by) = if guard_section.given(name) {
+            (guard_section.at(name), "")
+        } else {
+            (section.at("latency_ms"), " (the default)")
+        };
+        notes.wrong(
+            &at,
+            format!(
+                "`{name}` = {value_ms}{by} would trip on a sound line: with one frame lost on link \"{}\" the newest answer can be \
+                 {:.0} ms old (ticks of {period_ms:.1} ms, {} bit/s, `latency_ms` = {}); raise the one or lower the others",
+                link.name,
+                libm::ceil(least_ms),
+                link.baud,
+                link.latency_ms
+            ),
+        );
     }
 }
 
-/// How old the newest answer may be on a line that is sound: a tick until the next frame is sent, a frame each way, the
-/// adaptor's latency, a tick until it is looked at, and one frame lost.
-fn sound_age_ms(link: &LinkPlan, period_ms: f64) -> f64 {
+/// Drivers send feedback at least so often by themselves.
+const FEEDBACK_EVERY_MS: f64 = 20.0;
+
+/// How old the newest feedback may be on a sound line: two intervals where one is lost, and what adaptor and line add.
+fn feedback_age_ms(link: &LinkPlan, period_ms: f64) -> f64 {
+    let frame_s = link.seconds(size::feedback(usize::from(link.channels)));
+    2.0 * period_ms.min(FEEDBACK_EVERY_MS) + frame_s * 1e3 + link.latency_ms
+}
+
+/// How old the last acknowledged frame may be, seen from a tick: those that are still under way, and one lost.
+fn heard_age_ms(link: &LinkPlan, period_ms: f64) -> f64 {
     let channels = usize::from(link.channels);
     let frames_s = link.seconds(size::drive(channels)) + link.seconds(size::feedback(channels));
-    3.0 * period_ms + frames_s * 1e3 + link.latency_ms
+    (1.0 + libm::ceil((frames_s * 1e3 + link.latency_ms) / period_ms)) * period_ms
 }
