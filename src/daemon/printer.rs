@@ -178,6 +178,7 @@ fn is_lasting(wait: &Wait) -> bool {
         | Wait::Quitting
         | Wait::WrongPhase
         | Wait::NotStanding
+        | Wait::NotLatched { .. }
         | Wait::StopDown => false,
     }
 }

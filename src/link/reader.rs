@@ -72,11 +72,11 @@ pub struct Links {
     pub stop: StopLine,
 }
 
-/// Opens every port and starts a thread for each. With `wait`, ports that cannot be opened yet are tried again by
-/// their threads; without it that is an error.
+/// Opens every port and starts a thread for each. With `wait`, ports that are not there yet are tried again by their
+/// threads; without it that is an error.
 ///
 /// # Errors
-/// The first port that cannot be opened, unless `wait`.
+/// The first port that cannot be opened, unless it is absent and `wait`.
 pub fn start(plan: &Plan, wait: bool, tap: Tap) -> Result<Links, LinkError> {
     let (tell, news) = bounded(NEWS);
     let slots: Vec<Arc<Slot>> = plan.links.iter().map(|_| Arc::new(Slot::new())).collect();
@@ -86,7 +86,8 @@ pub fn start(plan: &Plan, wait: bool, tap: Tap) -> Result<Links, LinkError> {
     for (index, (link, slot)) in (0_u8..).zip(plan.links.iter().zip(&slots)) {
         let opened = match open::open(&link.name, &link.port, link.baud) {
             Ok(opened) => Some(opened),
-            Err(_) if wait => None,
+            // What is in use, not permitted or no port at all does not mend itself by waiting.
+            Err(LinkError::Absent { .. }) if wait => None,
             Err(error) => return Err(error),
         };
         lines.push(Line {

@@ -4,7 +4,7 @@ use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::sync::atomic::{AtomicU32, Ordering};
 
-use crossbeam_channel::{Receiver, Sender, bounded};
+use crossbeam_channel::{Receiver, Sender, TryRecvError, bounded};
 use serde::Serialize;
 
 use super::item::{Pad, Tick};
@@ -20,6 +20,8 @@ use crate::wire::Direction;
 pub(super) const CHUNK: usize = 1000;
 /// Chunks in the queue: about a megabyte, a second of ticks and frames at 200 Hz.
 const QUEUE: usize = 1024;
+/// So often the queue is looked into. A receiver that waits would make whoever sends take a lock to wake it.
+const LOOK_MS: u64 = 10;
 /// The largest packet: a snapshot with the longest moving average.
 pub(super) const LARGEST: usize = 32 * 1024;
 
@@ -110,8 +112,7 @@ pub fn start(dir: &Path, plan: &Plan) -> Result<Recorder, RecordError> {
 fn write_all(mut writer: Writer, take: &Receiver<Message>, lost: &AtomicU32, trouble: &AtomicU32) {
     let mut flushed = clock::now();
     loop {
-        let message = take.recv_timeout(std::time::Duration::from_millis(50));
-        match message {
+        match take.try_recv() {
             Ok(Message::Chunk(chunk)) => {
                 let count = lost.swap(0, Ordering::Relaxed);
                 if count > 0 {
@@ -124,8 +125,8 @@ fn write_all(mut writer: Writer, take: &Receiver<Message>, lost: &AtomicU32, tro
                 let _ = done.send(());
                 return;
             }
-            Err(crossbeam_channel::RecvTimeoutError::Timeout) => {}
-            Err(crossbeam_channel::RecvTimeoutError::Disconnected) => {
+            Err(TryRecvError::Empty) => clock::sleep_ms(LOOK_MS),
+            Err(TryRecvError::Disconnected) => {
                 writer.flush();
                 return;
             }
