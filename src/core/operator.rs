@@ -31,10 +31,8 @@ impl Core {
 
     pub(super) fn ready(&mut self, inputs: &Inputs, seen: &Seen, out: &mut Outputs) {
         self.shaper.rest();
-        let touched = seen.hold.pressed
-            || !seen.centred
-            || inputs.pad.down.with(inputs.pad.pressed) != Buttons::default();
-        if touched {
+        // Edges only: a control that is stuck does not keep the torque on.
+        if seen.hold.edge || (inputs.pad.present && inputs.pad.pressed != Buttons::default()) {
             self.state.ready_since = inputs.now;
         }
         let idle = inputs.now.since_ns(self.state.ready_since) >= self.settings.times.ready_idle_ns;

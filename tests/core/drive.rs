@@ -67,6 +67,7 @@ fn a_press_that_was_not_seen_released_in_ready_is_spent() {
     world.hold(1.0);
     world.until(2.0, "standstill", |it| it.phase() == Phase::Ready);
     // Released and pressed again between two ticks: released was never seen in Ready.
+    world.events.clear();
     world.pad.hold_least = 0.0;
     world.tick();
     assert_eq!(world.phase(), Phase::Ready);
@@ -111,12 +112,16 @@ fn ready_left_alone_parks_and_one_that_is_touched_does_not() {
     assert_eq!(world.phase(), Phase::Parked);
     let mut world = World::new(plan()).into_ready();
     for _ in 0..5 {
-        world.run_s(0.7);
-        world.sticks(0.3, 0.0, 0.0);
-        world.tick();
-        world.sticks(0.0, 0.0, 0.0);
+        world.run_s(0.9);
+        world.tap(Buttons::PACE_UP);
     }
     assert_eq!(world.phase(), Phase::Ready);
+    // A hold control that is stuck does not keep it awake.
+    let mut world = World::new(plan()).into_ready();
+    world.sticks(0.5, 0.0, 0.0);
+    world.hold(1.0);
+    world.run_s(1.01);
+    assert_eq!(world.phase(), Phase::Parked);
 }
 
 #[test]
@@ -254,6 +259,19 @@ fn the_console_resets_what_it_may() {
         world.reset();
         assert_eq!(world.phase(), Phase::Parked);
     }
+}
+
+#[test]
+fn a_squeeze_while_tripped_also_wants_the_pad() {
+    let plan = mecanum_with("[pad]\nhold_on = 0.3\nhold_off = 0.2\nhold_squeeze = 0.8");
+    let mut world = World::new(plan).into_tripped();
+    world.hold(0.9);
+    world.tick();
+    world.hold(0.0);
+    world.tick();
+    world.console.reset = true;
+    world.run_s(0.5);
+    assert_eq!(world.phase(), Phase::Tripped);
 }
 
 #[test]

@@ -53,6 +53,14 @@ fn a_trigger_between_its_thresholds_neither_presses_nor_releases() {
     world.pad.hold_least = 0.39;
     world.tick();
     assert_eq!(world.phase(), Phase::Stopping, "a release between two ticks is not lost");
+    // Nor one after which it is pressed home again: that press is spent.
+    let mut world = World::new(four_mecanum()).at_speed(1.0, 0.0, 0.0);
+    world.pad.hold_least = 0.0;
+    world.tick();
+    assert_eq!(world.phase(), Phase::Stopping);
+    world.sticks(0.0, 0.0, 0.0);
+    world.run_s(2.0);
+    assert_eq!(world.phase(), Phase::Ready);
 }
 
 #[test]
@@ -345,7 +353,8 @@ fn not_following_trips_after_half_a_second_above_a_tenth_of_full_speed() {
 
 #[test]
 fn sound_wheels_that_lag_follow_through_every_ramp() {
-    let mut world = World::new(four_mecanum());
+    // Shares and times so small that only the allowance for the lag explains the way behind a ramp.
+    let mut world = World::new(mecanum_with("[guard]\nfollow_share = 0.02\nfollow_s = 0.3"));
     world.boards[0].lag_s = 0.08;
     let mut world = world.into_driving();
     world.press(Buttons::PACE_UP);
@@ -394,6 +403,19 @@ fn wheels_that_slow_down_with_a_lag_are_not_taken_for_stuck() {
     world.console.stop = true;
     world.run_s(1.0);
     assert!(world.tape.iter().all(|(_, out)| out.stop_ramp_ms > 0));
+}
+
+#[test]
+fn a_line_gone_quiet_is_not_taken_for_wheels_that_do_not_slow_down() {
+    let mut world = World::new(patient_drivers()).into_driving();
+    world.tap(Buttons::PACE_UP);
+    world.sticks(1.0, 0.0, 0.0);
+    world.run_s(2.0);
+    world.boards[0].mute = true;
+    world.run_s(1.0);
+    assert_eq!(world.cause(), "feedback-quiet");
+    assert!(!world.told(|it| matches!(it, Event::Trip(Cause::NotSlowing { .. }))));
+    assert!(world.out.stop_ramp_ms > 300, "the drivers ramp");
 }
 
 #[test]
@@ -492,10 +514,7 @@ fn from_five_wheels_on_the_skidding_one_is_named() {
 
 #[test]
 fn three_wheels_never_skid() {
-    let plan = crate::world::plan(&format!(
-        "{}\n[guard]\nfollow_share = 1.0",
-        include_str!("../../config/three-omni.toml")
-    ));
+    let plan = crate::world::plan(&format!("{}\n[guard]\nfollow_share = 1.0", include_str!("lamp.toml")));
     let mut world = World::new(plan).at_speed(0.5, 0.0, 0.0);
     world.boards[0].report_offset = vec![20_000.0, -9_000.0, 15_000.0];
     world.run_s(3.0);

@@ -11,7 +11,7 @@ use gripline::shaping::Sticks;
 use gripline::units::Mono;
 use gripline::wire::{ChannelState, Feedback, Identity, ToDrivers, flag, status};
 
-use crate::world::{four_mecanum_text, plan, promises};
+use crate::world::{plan, promises};
 
 /// What goes wrong in a tick.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -434,8 +434,8 @@ fn quick_plan() -> Plan {
         "{}\n[loop]\nrate_hz = 20.0\n[pad]\nhold_on = 0.5\nhold_off = 0.4\nhold_squeeze = 0.9\n[guard]\nlate_ms = \
          60.0\nstandstill_s = 0.05\nreset_hold_s = 0.2\nstop_margin_s = 0.3\nready_idle_s = 1.0\nfollow_s = \
          0.1\nslowing_s = 0.05\nrunaway_s = 0.1\nfollow_lag_s = 0.0\ndriver_ms = 0.0\nskid_s = 0.2\nnot_heard_ms = \
-         110.0\nfeedback_quiet_ms = 110.0\n",
-        four_mecanum_text().replace("smoothing_s = 0.1", "smoothing_s = 0.05")
+         170.0\nfeedback_quiet_ms = 170.0\n",
+        include_str!("tray.toml").replace("smoothing_s = 0.1", "smoothing_s = 0.05")
     ))
 }
 

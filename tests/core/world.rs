@@ -15,18 +15,12 @@ use gripline::wire::{
 /// Steps of the drivers and wheels.
 const STEP_US: u64 = 250;
 
-/// The shipped cart with the default guards, whatever drivers' delay it was measured with.
-pub(crate) fn four_mecanum_text() -> String {
-    let lines = include_str!("../../config/four-mecanum.toml").lines();
-    lines.filter(|it| *it != "[guard]" && !it.starts_with("driver_ms")).flat_map(|it| [it, "\n"]).collect()
-}
-
 pub(crate) fn four_mecanum() -> Plan {
-    plan(&four_mecanum_text())
+    plan(include_str!("tray.toml"))
 }
 
 pub(crate) fn four_omni() -> Plan {
-    plan(include_str!("../../config/four-omni.toml"))
+    plan(include_str!("crate.toml"))
 }
 
 pub(crate) fn plan(text: &str) -> Plan {
@@ -38,7 +32,7 @@ pub(crate) fn plan(text: &str) -> Plan {
 
 /// The four mecanum wheels with more lines at the end of the configuration.
 pub(crate) fn mecanum_with(more: &str) -> Plan {
-    plan(&format!("{}\n{more}", four_mecanum_text()))
+    plan(&format!("{}\n{more}", include_str!("tray.toml")))
 }
 
 /// One link's drivers and their wheels.
@@ -209,7 +203,7 @@ impl Board {
 
 /// Four mecanum wheels with a validity that runs out late, so that the host's guards are seen alone.
 pub(crate) fn patient_drivers() -> Plan {
-    plan(&four_mecanum_text().replace("valid_ms = 100", "valid_ms = 900"))
+    plan(&include_str!("tray.toml").replace("valid_ms = 100", "valid_ms = 900"))
 }
 
 /// All of it.
