@@ -6,8 +6,14 @@ use crate::bench::{Bench, PEER, Peer, READY_AND_DRIVE, Running, peer, wait_for};
 /// The drivers latched because they were told to, not because they heard nothing more.
 fn stopped_by_a_frame(peer: &mut Peer) {
     peer.running.says("\"event\": \"latched\", \"why\": \"stop\"");
+    // The peer notes what it makes of a frame before the frame.
+    peer.running.says("\"kind\": \"stop\"");
     let silent = peer.running.seen.iter().any(|it| it.contains("\"why\": \"silence\""));
     assert!(!silent, "the stop came only after the drivers had stopped by themselves");
+    let seen = &peer.running.seen;
+    assert!(seen.iter().any(|it| it.contains("\"mode\": \"run\"")), "it never drove");
+    let stop = seen.iter().position(|it| it.contains("\"kind\": \"stop\"")).unwrap();
+    assert!(!seen[stop..].iter().any(|it| it.contains("\"kind\": \"drive\"")), "motion after the stop");
 }
 
 /// Drives on the Python drivers until the fault strikes; gives the drive and what the drivers heard.
@@ -27,6 +33,8 @@ fn a_tick_that_hangs_or_spins_is_stopped_by_the_sentinel() {
         let bench = Bench::new();
         let (drive, mut peer) = struck(fault, &bench);
         stopped_by_a_frame(&mut peer);
+        // It goes on saying so.
+        (0..3).for_each(|_| stopped_by_a_frame(&mut peer));
         drive.signal("KILL");
     }
 }
