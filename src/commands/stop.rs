@@ -61,14 +61,8 @@ pub(crate) fn run(args: Args) -> Exit {
     {
         return exit;
     }
-    if !args.last_act {
-        match through_drives(&args, plan.as_ref()) {
-            Ok(true) => {
-                return told(&args, &json!({ "stopped_by": "drive" }), "stopped through the running drive");
-            }
-            Ok(false) => {}
-            Err(exit) => return exit,
-        }
+    if !args.last_act && through_drives(&args, plan.as_ref()) {
+        return told(&args, &json!({ "stopped_by": "drive" }), "stopped through the running drive");
     }
     match plan {
         Some(plan) => straight(&args, &plan),
@@ -77,21 +71,16 @@ pub(crate) fn run(args: Args) -> Exit {
 }
 
 /// Through every drive that is meant; false when there is none or one does not answer.
-fn through_drives(args: &Args, plan: Option<&Plan>) -> Result<bool, Exit> {
-    let mut drives = match args.target.listening(plan) {
-        Ok(drives) => drives,
-        Err(error) if error.kind() == ErrorKind::PermissionDenied => {
-            // Somebody else's drive may be sound: it must not be ended for want of a membership.
-            return Err(fail(
-                Exit::Hardware,
-                "no permission for the console of this drive; join the group `gripline`, or stop it as the user that started it",
-            ));
+fn through_drives(args: &Args, plan: Option<&Plan>) -> bool {
+    let mut drives = args.target.listening(plan).unwrap_or_else(|error| {
+        if error.kind() == ErrorKind::PermissionDenied {
+            warn("no permission for the console of this drive; join the group `gripline`, or be the user that started it");
         }
-        Err(_) => Vec::new(),
-    };
+        Vec::new()
+    });
     let asked = drives.iter_mut().map(|it| daemon::ask(it, &json!({ "ask": "stop" }), ANSWER_WITHIN));
     let asked: Vec<bool> = asked.map(|it| it.is_ok_and(|it| it.get("done").is_some())).collect();
-    Ok(!drives.is_empty() && asked.into_iter().all(|it| it) && drives.iter_mut().all(has_tripped))
+    !drives.is_empty() && asked.into_iter().all(|it| it) && drives.iter_mut().all(has_tripped)
 }
 
 /// The console pulls the stop line by itself; the tick must be alive to go on with it.

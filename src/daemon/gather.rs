@@ -2,7 +2,7 @@
 
 use std::sync::atomic::{AtomicBool, AtomicU32, Ordering};
 
-use crossbeam_channel::Receiver;
+use rtrb::Consumer;
 
 use crate::config::PadPlan;
 use crate::core::io::{ConsoleInput, Heard, Inputs, LinkInput, PadInput};
@@ -50,7 +50,7 @@ pub(super) struct Asked {
     pub(super) reset: AtomicBool,
 }
 
-/// News taken in one tick; far more than a line can carry in it.
+/// News of one link taken in one tick; far more than a line can carry in it.
 const NEWS_A_TICK: usize = 256;
 
 /// Collects inputs tick by tick.
@@ -80,7 +80,7 @@ impl Gather {
         (now, due): (Mono, Mono),
         pad: &mut PadSource,
         lines: &mut [Line],
-        news: &Receiver<LinkNews>,
+        news: &mut [Consumer<LinkNews>],
         stop: &StopLine,
         asked: &Asked,
     ) {
@@ -92,8 +92,10 @@ impl Gather {
             link.status_seen = 0;
         }
         // Bounded, so that a line that never stops talking cannot hold the tick.
-        for it in news.try_iter().take(NEWS_A_TICK) {
-            self.take(it, lines);
+        for link in news {
+            for it in std::iter::from_fn(|| link.pop().ok()).take(NEWS_A_TICK) {
+                self.take(it, lines);
+            }
         }
         for ((link, line), bytes) in self.inputs.links.iter_mut().zip(lines.iter()).zip(&self.frame_bytes) {
             link.unsent =

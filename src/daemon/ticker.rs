@@ -4,7 +4,8 @@
 use std::sync::Arc;
 use std::sync::atomic::Ordering;
 
-use crossbeam_channel::{Receiver, Sender};
+use crossbeam_channel::Sender;
+use rtrb::Consumer;
 
 use super::board::Board;
 use super::gather::{Asked, Gather, PadSource};
@@ -33,7 +34,7 @@ pub(super) struct Ticker {
     pub(super) plan: Arc<Plan>,
     pub(super) pad: PadSource,
     pub(super) lines: Vec<Line>,
-    pub(super) news: Receiver<LinkNews>,
+    pub(super) news: Vec<Consumer<LinkNews>>,
     pub(super) stop: StopLine,
     pub(super) asked: Arc<Asked>,
     pub(super) recorder: Recorder,
@@ -92,7 +93,7 @@ struct Ticks {
 impl Ticks {
     fn tick(&mut self, now: Mono, due: Mono) {
         let own = &mut self.own;
-        self.gather.gather((now, due), &mut own.pad, &mut own.lines, &own.news, &own.stop, &own.asked);
+        self.gather.gather((now, due), &mut own.pad, &mut own.lines, &mut own.news, &own.stop, &own.asked);
         self.pad_seen |= self.gather.inputs.pad.present;
         if self.count.is_multiple_of(self.snapshot_every) {
             own.recorder.snapshot(now, &self.core.state());

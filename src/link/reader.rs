@@ -5,7 +5,7 @@ use std::sync::Arc;
 use std::sync::atomic::{AtomicBool, Ordering};
 
 use arrayvec::ArrayVec;
-use crossbeam_channel::{Receiver, Sender, bounded};
+use rtrb::{Consumer, Producer, PushError, RingBuffer};
 
 use super::slot::Slot;
 use super::{Line, LinkError, StopLine, Tap, open};
@@ -66,8 +66,9 @@ const READ_WAIT_MS: i32 = 500;
 pub struct Links {
     /// The tick's handles, in the order of the plan.
     pub lines: Vec<Line>,
-    /// What the links' threads tell.
-    pub news: Receiver<LinkNews>,
+    /// What the links' threads tell, in the order of the plan. A ring without locks: the tick never waits for a thread
+    /// that was interrupted while it was telling something.
+    pub news: Vec<Consumer<LinkNews>>,
     /// The stop line over all of them.
     pub stop: StopLine,
 }
@@ -78,11 +79,11 @@ pub struct Links {
 /// # Errors
 /// The first port that cannot be opened, unless it is absent and `wait`.
 pub fn start(plan: &Plan, wait: bool, tap: Tap) -> Result<Links, LinkError> {
-    let (tell, news) = bounded(NEWS);
     let slots: Vec<Arc<Slot>> = plan.links.iter().map(|_| Arc::new(Slot::new())).collect();
     let stop = StopLine::new(&slots, Arc::clone(&tap));
     let mut lines = Vec::new();
     let mut readers = Vec::new();
+    let mut news = Vec::new();
     for (index, (link, slot)) in (0_u8..).zip(plan.links.iter().zip(&slots)) {
         let opened = match open::open(&link.name, &link.port, link.baud) {
             Ok(opened) => Some(opened),
@@ -97,13 +98,15 @@ pub fn start(plan: &Plan, wait: bool, tap: Tap) -> Result<Links, LinkError> {
             tap: Arc::clone(&tap),
             rest: ArrayVec::new(),
         });
+        let (tell, hear) = RingBuffer::new(NEWS);
+        news.push(hear);
         let reader = Reader {
             index,
             link: link.clone(),
             slot: Arc::clone(slot),
             stop: stop.clone(),
             tap: Arc::clone(&tap),
-            tell: tell.clone(),
+            tell,
             dropped: 0,
         };
         readers.push((reader, opened));
@@ -127,7 +130,7 @@ struct Reader {
     slot: Arc<Slot>,
     stop: StopLine,
     tap: Tap,
-    tell: Sender<LinkNews>,
+    tell: Producer<LinkNews>,
     dropped: u32,
 }
 
@@ -216,16 +219,20 @@ impl Reader {
 
     fn drop_one(&mut self) {
         self.dropped = self.dropped.saturating_add(1);
-        let _ = self.tell.try_send(LinkNews::Dropped { link: self.index, count: self.dropped });
+        let _ = self.tell.push(LinkNews::Dropped { link: self.index, count: self.dropped });
     }
 
     fn news(&mut self, news: LinkNews) {
         let must = matches!(news, LinkNews::Opened { .. } | LinkNews::Closed { .. });
-        if must {
-            // Told once only, so it waits for room; nothing depends on this thread meanwhile.
-            let _ = self.tell.send(news);
-        } else if self.tell.try_send(news).is_err() {
+        let mut left = self.tell.push(news);
+        if !must && left.is_err() {
             self.drop_one();
+            return;
+        }
+        // Told once only, so it waits for room; nothing depends on this thread meanwhile.
+        while let Err(PushError::Full(news)) = left {
+            clock::sleep_ms(1);
+            left = self.tell.push(news);
         }
     }
 }

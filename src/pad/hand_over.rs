@@ -1,12 +1,12 @@
-//! From the pad's thread to the tick: whole states through a bounded channel. A press between two ticks is never lost.
+//! From the pad's thread to the tick: whole states through a ring without locks. A press between two ticks is never lost.
 
-use crossbeam_channel::Receiver;
+use rtrb::Consumer;
 
 use crate::core::io::{Buttons, PadInput};
 
 /// The tick's end.
 pub struct PadFeed {
-    pub(super) take: Receiver<PadInput>,
+    pub(super) take: Consumer<PadInput>,
     pub(super) last: PadInput,
 }
 
@@ -16,7 +16,8 @@ impl PadFeed {
         // What was told before has been seen.
         self.last.pressed = Buttons::default();
         self.last.hold_least = self.last.hold;
-        while let Ok(next) = self.take.try_recv() {
+        let waiting = self.take.slots();
+        for next in std::iter::from_fn(|| self.take.pop().ok()).take(waiting) {
             self.last = merged(&self.last, &next);
         }
         self.last
@@ -35,7 +36,7 @@ fn merged(before: &PadInput, next: &PadInput) -> PadInput {
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crossbeam_channel::bounded;
+    use rtrb::RingBuffer;
 
     fn input(pressed: Buttons, hold: f64, hold_least: f64) -> PadInput {
         PadInput { present: true, pressed, hold, hold_least, ..PadInput::default() }
@@ -43,12 +44,12 @@ mod tests {
 
     #[test]
     fn presses_and_releases_between_two_ticks_are_not_lost() {
-        let (tell, take) = bounded(8);
+        let (mut tell, take) = RingBuffer::new(8);
         let mut feed = PadFeed { take, last: PadInput::default() };
-        tell.send(input(Buttons::default(), 1.0, 1.0)).unwrap();
+        tell.push(input(Buttons::default(), 1.0, 1.0)).unwrap();
         assert!((feed.poll().hold - 1.0).abs() < 1e-12);
-        tell.send(input(Buttons::READY, 1.0, 0.0)).unwrap();
-        tell.send(input(Buttons::default(), 1.0, 1.0)).unwrap();
+        tell.push(input(Buttons::READY, 1.0, 0.0)).unwrap();
+        tell.push(input(Buttons::default(), 1.0, 1.0)).unwrap();
         let seen = feed.poll();
         assert!(seen.pressed.has(Buttons::READY));
         assert!(seen.hold_least.abs() < 1e-12, "the release was lost");
@@ -59,10 +60,10 @@ mod tests {
 
     #[test]
     fn an_unplugged_pad_leaves_nothing_behind() {
-        let (tell, take) = bounded(8);
+        let (mut tell, take) = RingBuffer::new(8);
         let mut feed = PadFeed { take, last: PadInput::default() };
-        tell.send(input(Buttons::READY, 1.0, 1.0)).unwrap();
-        tell.send(PadInput::default()).unwrap();
+        tell.push(input(Buttons::READY, 1.0, 1.0)).unwrap();
+        tell.push(PadInput::default()).unwrap();
         let seen = feed.poll();
         assert!(!seen.present && seen.hold.abs() < 1e-12 && seen.pressed == Buttons::default());
     }

@@ -2,8 +2,9 @@
 
 use std::time::Duration;
 
-use crossbeam_channel::{Sender, TrySendError, bounded};
+use crossbeam_channel::bounded;
 use gilrs::{EventType, GamepadId, Gilrs, GilrsBuilder};
+use rtrb::{Producer, RingBuffer};
 
 use super::choose::{self, choose};
 use super::hand_over::PadFeed;
@@ -49,7 +50,7 @@ pub(super) fn build() -> Result<Gilrs, PadError> {
 /// # Errors
 /// When gamepads cannot be looked for at all. That there is none is no error: it is waited for.
 pub fn start(plan: &PadPlan, on_stop: impl Fn(Puller) + Send + 'static) -> Result<PadFeed, PadError> {
-    let (tell, take) = bounded(64);
+    let (tell, take) = RingBuffer::new(64);
     let plan = plan.clone();
     let (started, begun) = bounded(1);
     std::thread::Builder::new()
@@ -85,7 +86,7 @@ struct Thread<F> {
     plan: PadPlan,
     state: State,
     held: Option<Held>,
-    tell: Sender<PadInput>,
+    tell: Producer<PadInput>,
     on_stop: F,
     looked: Option<Mono>,
     /// Something has changed that was not handed over yet.
@@ -225,16 +226,13 @@ impl<F: Fn(Puller)> Thread<F> {
         if !self.changed {
             return;
         }
-        match self.tell.try_send(self.state.input()) {
-            Ok(()) => {
-                self.state.taken();
-                self.changed = false;
-                if let Some(held) = &mut self.held {
-                    held.last_told = now;
-                }
+        // Without room the tick stands still: what happened is kept until it takes it.
+        if self.tell.push(self.state.input()).is_ok() {
+            self.state.taken();
+            self.changed = false;
+            if let Some(held) = &mut self.held {
+                held.last_told = now;
             }
-            // The tick stands still: what happened is kept until it takes it.
-            Err(TrySendError::Full(_) | TrySendError::Disconnected(_)) => {}
         }
     }
 }

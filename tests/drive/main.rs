@@ -7,189 +7,17 @@
     reason = "tests of a running program wait and stop by themselves"
 )]
 
-use std::io::{BufRead, BufReader, Read, Write};
-use std::path::{Path, PathBuf};
-use std::process::{Child, Command, ExitStatus, Stdio};
-use std::sync::mpsc::{Receiver, channel};
-use std::time::{Duration, Instant};
+mod bench;
+mod console;
+#[cfg(feature = "test-faults")]
+mod faults;
+mod service;
 
-const GRIPLINE: &str = env!("CARGO_BIN_EXE_gripline");
-const EXAMPLE: &str = concat!(env!("CARGO_MANIFEST_DIR"), "/config/four-mecanum.toml");
-const PATIENCE: Duration = Duration::from_secs(20);
+use std::path::Path;
+use std::process::Command;
+use std::time::Duration;
 
-/// A folder with a configuration whose guards bear a busy test machine, and what runs on it.
-struct Bench {
-    dir: tempfile::TempDir,
-}
-
-impl Bench {
-    fn new() -> Self {
-        let dir = tempfile::tempdir().unwrap();
-        let text = std::fs::read_to_string(EXAMPLE).unwrap();
-        let relaxed = text.replace("valid_ms = 100 ", "valid_ms = 600 ").replace(
-            "[guard]\n",
-            "[guard]\nlate_ms = 500.0\nfeedback_quiet_ms = 600.0\nnot_heard_ms = 600.0\nfollow_s = 3.0\nskid_s = 5.0\nstop_margin_s = 3.0\n",
-        );
-        let relaxed = relaxed.replace("clear_m = 3.0 ", "clear_m = 9.0 ") + "\n[console]\nreset = true\n";
-        std::fs::write(dir.path().join("cart.toml"), relaxed).unwrap();
-        Self { dir }
-    }
-
-    fn path(&self, name: &str) -> PathBuf {
-        self.dir.path().join(name)
-    }
-
-    fn hands(&self, lines: &str) -> PathBuf {
-        let path = self.path("hands.csv");
-        std::fs::write(&path, lines).unwrap();
-        path
-    }
-
-    fn gripline(&self, command: &str) -> Command {
-        let mut it = Command::new(GRIPLINE);
-        it.arg(command)
-            .arg(self.path("cart.toml"))
-            .env("XDG_RUNTIME_DIR", self.dir.path())
-            .env_remove("RUNTIME_DIRECTORY");
-        it
-    }
-
-    fn standin(&self) -> Running {
-        let mut command = self.gripline("standin");
-        command.arg("--link-dir").arg(self.path("links")).args(["--quiet", "--until-eof"]);
-        let it = Running::start(&mut command);
-        wait_for("the stand-in's port", || self.path("links/base").exists());
-        it
-    }
-
-    fn drive(&self, hands: &Path) -> Running {
-        let mut command = self.gripline("drive");
-        command.arg("--port").arg(self.path("links/base")).arg("--hands").arg(hands);
-        command.arg("--record-dir").arg(self.path("runs"));
-        Running::start(&mut command)
-    }
-
-    fn status(&self) -> Option<serde_json::Value> {
-        let out = self.gripline("status").arg("--json").output().unwrap();
-        serde_json::from_slice(&out.stdout).ok()
-    }
-
-    fn phase_is(&self, phase: &str) -> bool {
-        self.status().is_some_and(|it| it["phase"] == phase)
-    }
-
-    fn run_file(&self) -> PathBuf {
-        std::fs::read_dir(self.path("runs")).unwrap().next().unwrap().unwrap().path()
-    }
-
-    /// The rows of ticks.csv, as maps by column.
-    fn ticks(&self) -> Vec<std::collections::HashMap<String, String>> {
-        let out = Command::new(GRIPLINE)
-            .arg("review")
-            .arg(self.run_file())
-            .arg("--csv")
-            .arg(self.path("csv"))
-            .output()
-            .unwrap();
-        assert!(out.status.success(), "{}", String::from_utf8_lossy(&out.stderr));
-        let text = std::fs::read_to_string(self.path("csv/ticks.csv")).unwrap();
-        let mut lines = text.lines();
-        let names: Vec<&str> = lines.next().unwrap().split(',').collect();
-        lines
-            .map(|line| {
-                names.iter().map(|it| (*it).to_owned()).zip(line.split(',').map(str::to_owned)).collect()
-            })
-            .collect()
-    }
-}
-
-/// A started process: its lines are collected, and it is ended with the test.
-struct Running {
-    child: Child,
-    lines: Receiver<String>,
-    seen: Vec<String>,
-    errors: Receiver<String>,
-}
-
-impl Running {
-    fn start(command: &mut Command) -> Self {
-        let mut child =
-            command.stdin(Stdio::piped()).stdout(Stdio::piped()).stderr(Stdio::piped()).spawn().unwrap();
-        let lines = collect(child.stdout.take().unwrap());
-        let errors = collect(child.stderr.take().unwrap());
-        Self { child, lines, seen: Vec::new(), errors }
-    }
-
-    /// Waits until a line contains these words.
-    fn says(&mut self, words: &str) {
-        let until = Instant::now() + PATIENCE;
-        loop {
-            match self.lines.recv_timeout(Duration::from_millis(50)) {
-                Ok(line) => {
-                    let found = line.contains(words);
-                    self.seen.push(line);
-                    if found {
-                        return;
-                    }
-                }
-                Err(_) => assert!(Instant::now() < until, "never said {words:?}; said {:#?}", self.seen),
-            }
-        }
-    }
-
-    fn signal(&self, name: &str) {
-        let pid = self.child.id().to_string();
-        assert!(Command::new("kill").args([&format!("-{name}"), &pid]).status().unwrap().success());
-    }
-
-    fn ends(&mut self) -> ExitStatus {
-        let until = Instant::now() + PATIENCE;
-        loop {
-            if let Some(status) = self.child.try_wait().unwrap() {
-                return status;
-            }
-            if Instant::now() > until {
-                let said: Vec<String> = self.lines.try_iter().collect();
-                panic!("did not end; said {:#?} {said:#?}", self.seen);
-            }
-            std::thread::sleep(Duration::from_millis(10));
-        }
-    }
-
-    fn errors(&mut self) -> String {
-        let _ = self.ends();
-        self.errors.iter().collect::<Vec<_>>().join("\n")
-    }
-}
-
-impl Drop for Running {
-    fn drop(&mut self) {
-        let _ = self.child.kill();
-        let _ = self.child.wait();
-    }
-}
-
-fn collect(from: impl Read + Send + 'static) -> Receiver<String> {
-    let (tell, lines) = channel();
-    std::thread::spawn(move || {
-        for line in BufReader::new(from).lines().map_while(Result::ok) {
-            if tell.send(line).is_err() {
-                return;
-            }
-        }
-    });
-    lines
-}
-
-fn wait_for(what: &str, mut is_so: impl FnMut() -> bool) {
-    let until = Instant::now() + PATIENCE;
-    while !is_so() {
-        assert!(Instant::now() < until, "waited in vain for {what}");
-        std::thread::sleep(Duration::from_millis(20));
-    }
-}
-
-const READY_AND_DRIVE: &str = "0.3,Start,1\n0.5,Start,0\n0.8,RightTrigger2,1\n1.0,LeftStickY,1\n";
+use bench::{Bench, GRIPLINE, PEER, READY_AND_DRIVE, Running, peer, wait_for};
 
 #[test]
 fn a_signal_in_motion_ramps_parks_and_ends_in_order() {
@@ -352,50 +180,6 @@ fn what_cannot_run_says_what_where_and_what_to_do() {
     let out = bench.gripline("status").output().unwrap();
     assert_eq!(out.status.code(), Some(1));
 }
-
-/// Drivers in Python that share no code with this program, on a pseudo-terminal of their own.
-struct Peer {
-    running: Running,
-    port: PathBuf,
-}
-
-fn peer(arguments: &[&str]) -> Peer {
-    let mut command = Command::new("python3");
-    command
-        .arg("-u")
-        .arg(concat!(env!("CARGO_MANIFEST_DIR"), "/tests/peer/peer.py"))
-        .arg("--pty")
-        .args(arguments);
-    let running = Running::start(&mut command);
-    let mut port = None;
-    wait_for("the peer's port", || {
-        let line = running.lines.recv_timeout(Duration::from_millis(50)).unwrap_or_default();
-        if let Some(at) = line.find("/dev/pts/") {
-            let end = line[at..].find(['"', ' ', ',']).map_or(line.len(), |it| at + it);
-            port = Some(PathBuf::from(&line[at..end]));
-        }
-        port.is_some()
-    });
-    Peer { running, port: port.unwrap() }
-}
-
-impl Peer {
-    fn drive(&self, bench: &Bench, hands: &Path, extra: &[&str]) -> Running {
-        let mut command = bench.gripline("drive");
-        command.arg("--port").arg(&self.port).arg("--hands").arg(hands).args(extra);
-        command.arg("--record-dir").arg(bench.path("runs"));
-        Running::start(&mut command)
-    }
-
-    fn told(&mut self, line: &str) {
-        let input = self.running.child.stdin.as_mut().unwrap();
-        writeln!(input, "{line}").unwrap();
-        input.flush().unwrap();
-    }
-}
-
-const PEER: [&str; 8] =
-    ["--name", "tray cart drivers", "--channels", "4", "--speed-lsb", "1000", "--angle-lsb", "500"];
 
 #[test]
 fn drivers_that_share_no_code_are_driven_stopped_and_reset() {
