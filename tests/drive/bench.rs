@@ -137,18 +137,16 @@ impl Running {
     /// Waits until a line contains these words.
     pub(crate) fn says(&mut self, words: &str) {
         let until = Instant::now() + PATIENCE;
-        loop {
-            match self.lines.recv_timeout(Duration::from_millis(50)) {
-                Ok(line) => {
-                    let found = line.contains(words);
-                    self.seen.push(line);
-                    if found {
-                        return;
-                    }
-                }
-                Err(_) => assert!(Instant::now() < until, "never said {words:?}; said {:#?}", self.seen),
+        while Instant::now() < until {
+            let Ok(line) = self.lines.recv_timeout(Duration::from_millis(50)) else { continue };
+            let found = line.contains(words);
+            self.seen.push(line);
+            if found {
+                return;
             }
         }
+        let last = &self.seen[self.seen.len().saturating_sub(40)..];
+        panic!("never said {words:?}; last said {last:#?}");
     }
 
     pub(crate) fn signal(&self, name: &str) {
