@@ -8,6 +8,7 @@ use super::gather::Asked;
 use crate::core::io::Puller;
 use crate::link::StopLine;
 use crate::sys::clock;
+use crate::units::Mono;
 
 /// After a panic the stop is written so often, this far apart, before the program ends.
 const REPEATS: u32 = 20;
@@ -29,11 +30,17 @@ pub(super) fn panic_pulls(stop: StopLine) {
     }));
 }
 
+/// One request to end often comes as several signals at once (a closing terminal, `timeout`): those count as one.
+const ONE_REQUEST_NS: u64 = 200_000_000;
+
 /// The first signal asks for an orderly end, a second one pulls the stop line.
 pub(super) fn signals_ask(asked: Arc<Asked>, stop: StopLine) {
+    let mut first: Option<Mono> = None;
     let handler = move || {
         asked.quit.store(true, Ordering::Relaxed);
-        if asked.signals.fetch_add(1, Ordering::Relaxed) > 0 {
+        let now = clock::now();
+        if now.since_ns(*first.get_or_insert(now)) > ONE_REQUEST_NS {
+            asked.hasty.store(true, Ordering::Relaxed);
             stop.pull(Puller::SecondSignal);
         }
     };

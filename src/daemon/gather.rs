@@ -1,6 +1,6 @@
 //! Gathers what a tick sees, without waiting and without allocating.
 
-use std::sync::atomic::{AtomicBool, AtomicU32, Ordering};
+use std::sync::atomic::{AtomicBool, Ordering};
 
 use rtrb::Consumer;
 
@@ -44,8 +44,8 @@ impl ScriptedHands {
 #[derive(Debug, Default)]
 pub(super) struct Asked {
     pub(super) quit: AtomicBool,
-    /// How many signals have asked for the end.
-    pub(super) signals: AtomicU32,
+    /// The end was asked a second time.
+    pub(super) hasty: AtomicBool,
     pub(super) stop: AtomicBool,
     pub(super) reset: AtomicBool,
 }

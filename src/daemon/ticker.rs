@@ -170,7 +170,7 @@ impl Ticks {
         }
         if self.gather.inputs.quit && self.out.phase == Phase::Tripped {
             let since = *self.quit_since.get_or_insert(now);
-            let haste = self.own.asked.signals.load(Ordering::Relaxed) > 1;
+            let haste = self.own.asked.hasty.load(Ordering::Relaxed);
             let limit_ns = if haste { LATCH_WITHIN_IN_HASTE_NS } else { LATCH_WITHIN_NS };
             if now.since_ns(since) > limit_ns {
                 return Some(Ok(Ended::Forced));

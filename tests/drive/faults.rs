@@ -79,8 +79,11 @@ fn a_hung_tick_starves_the_watchdog() {
     let mut bytes = [0; 4096];
     while manager.recv(&mut bytes).is_ok() {}
     manager.set_nonblocking(false).unwrap();
-    manager.set_read_timeout(Some(std::time::Duration::from_secs(2))).unwrap();
-    if let Ok(n) = manager.recv(&mut bytes) {
-        panic!("a hung tick told {:?}", String::from_utf8_lossy(&bytes[..n]));
+    manager.set_read_timeout(Some(std::time::Duration::from_millis(1500))).unwrap();
+    // The last tick may still have been told; one that feeds on would come four times a second.
+    let mut told = 0;
+    while manager.recv(&mut bytes).is_ok() {
+        told += 1;
+        assert!(told <= 2, "a hung tick feeds the watchdog");
     }
 }

@@ -43,6 +43,29 @@ fn a_signal_in_motion_ramps_parks_and_ends_in_order() {
 }
 
 #[test]
+fn a_second_signal_stops_at_once_but_one_that_comes_twice_is_one() {
+    for patient in [false, true] {
+        let bench = Bench::new();
+        bench.change("stop_m_s2 = 1.5", "stop_m_s2 = 0.2");
+        let _standin = bench.standin();
+        let mut drive = bench.drive(&bench.hands(READY_AND_DRIVE));
+        drive.says("Ready -> Driving");
+        wait_for("full speed", || bench.status().is_some_and(|it| it["sent"]["x_m_s"].as_f64() > Some(0.24)));
+        drive.signal("TERM");
+        if patient {
+            drive.signal("HUP");
+            drive.says("Stopping -> Parked");
+        } else {
+            drive.says("Driving -> Stopping");
+            std::thread::sleep(Duration::from_millis(300));
+            drive.signal("TERM");
+            drive.says("STOPPED: a second signal");
+        }
+        assert_eq!(drive.ends().code(), Some(0));
+    }
+}
+
+#[test]
 fn the_console_stops_at_once_and_resets_only_in_sight() {
     let bench = Bench::new();
     let _standin = bench.standin();
