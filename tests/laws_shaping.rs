@@ -299,13 +299,17 @@ proptest! {
         shaper.request_frame(Frame::Room);
         let sticks = Sticks { x: direction.cos(), y: direction.sin(), turn };
         let mut at = Pose::default();
+        let mut asked_m = 0.0;
         for _ in 0..2000 {
             let shaped = shaper.step(Goal::Follow { sticks, pace: machine.paces[1] }, at.heading_rad);
+            asked_m += shaped.in_stick_frame.travel_m_s() * PERIOD_S;
             at = at.then(pose::exp(shaped.in_base_frame, PERIOD_S));
         }
         let along = at.x_m * direction.cos() + at.y_m * direction.sin();
         let across = at.y_m * direction.cos() - at.x_m * direction.sin();
-        prop_assert!(along > 0.05, "went only {along} m");
+        // As far as was asked for, and never nowhere: the slowest of these machines creeps, so no fixed way can be named.
+        prop_assert!(asked_m > 0.0, "was never asked to move");
+        prop_assert!((along - asked_m).abs() <= 1e-4 * asked_m, "{along} m of {asked_m} m");
         prop_assert!(across.abs() <= 1e-4 * along, "{across} m off after {along} m");
     }
 }

@@ -67,7 +67,6 @@ fn a_panic_stops_the_base_and_ends_the_program() {
 }
 
 #[test]
-#[ignore = "issue 2: depends on how busy the machine is"]
 fn a_hung_tick_starves_the_watchdog() {
     let bench = Bench::new();
     let manager = std::os::unix::net::UnixDatagram::bind(bench.path("notify")).unwrap();
