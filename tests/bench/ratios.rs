@@ -47,7 +47,7 @@ fn ring(wheels: usize) -> Plan {
              max_rad_s = 24.0\nmax_rad_s2 = 120.0\nlink = \"base\"\nchannel = {i}\n",
             0.4 * angle.cos(),
             0.4 * angle.sin(),
-            angle.to_degrees() + 90.0
+            (angle.to_degrees() + 90.0).rem_euclid(360.0)
         );
     }
     text += &format!(
