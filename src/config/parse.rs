@@ -249,52 +249,19 @@ fn limits(section: &Section<'_>) -> Option<Limits> {
 
 const AXIS_KEYS: [&str; 3] = ["forward", "left", "turn_left"];
 
-/// In the order of [`super::keys::AXES`].
-const AXES: [PadAxis; 8] = [
-    PadAxis::LeftStickX,
-    PadAxis::LeftStickY,
-    PadAxis::LeftZ,
-    PadAxis::RightStickX,
-    PadAxis::RightStickY,
-    PadAxis::RightZ,
-    PadAxis::DPadX,
-    PadAxis::DPadY,
-];
-
-/// In the order of [`super::keys::BUTTONS`].
-const BUTTONS: [PadButton; 19] = [
-    PadButton::South,
-    PadButton::East,
-    PadButton::North,
-    PadButton::West,
-    PadButton::C,
-    PadButton::Z,
-    PadButton::LeftTrigger,
-    PadButton::LeftTrigger2,
-    PadButton::RightTrigger,
-    PadButton::RightTrigger2,
-    PadButton::Select,
-    PadButton::Start,
-    PadButton::Mode,
-    PadButton::LeftThumb,
-    PadButton::RightThumb,
-    PadButton::DPadUp,
-    PadButton::DPadDown,
-    PadButton::DPadLeft,
-    PadButton::DPadRight,
-];
-
 fn pad(section: &Section<'_>, notes: &Notes<'_>) -> Option<PadPlan> {
     let (name, id, wired) = (section.text("name"), section.text("id"), section.flag("wired"));
     let axis = |name| {
         section.axis(name).and_then(|At { value: (at, inverted), span }| {
-            AXES.get(at).map(|axis| At { value: SignedAxis { axis: *axis, inverted }, span })
+            PadAxis::ALL.get(at).map(|axis| At { value: SignedAxis { axis: *axis, inverted }, span })
         })
     };
     let axes = AXIS_KEYS.map(axis);
     let names = ["hold", "ready", "reset", "stop", "pace_up", "pace_down", "frame", "zero_heading"];
     let buttons = names.map(|name| {
-        section.word(name).and_then(|At { value, span }| BUTTONS.get(value).map(|it| At { value: *it, span }))
+        section
+            .word(name)
+            .and_then(|At { value, span }| PadButton::ALL.get(value).map(|it| At { value: *it, span }))
     });
     let (deadband, curve) = (section.number("deadband"), section.number("curve"));
     let (on, off, squeeze) =

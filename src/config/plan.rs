@@ -130,6 +130,20 @@ pub enum PadAxis {
     DPadY,
 }
 
+impl PadAxis {
+    /// All of them, in the order in which [`super::keys`] names them.
+    pub const ALL: [Self; 8] = [
+        Self::LeftStickX,
+        Self::LeftStickY,
+        Self::LeftZ,
+        Self::RightStickX,
+        Self::RightStickY,
+        Self::RightZ,
+        Self::DPadX,
+        Self::DPadY,
+    ];
+}
+
 /// Buttons of a pad, by gilrs' names.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
 #[expect(missing_docs, reason = "the names are gilrs' own")]
@@ -153,6 +167,31 @@ pub enum PadButton {
     DPadDown,
     DPadLeft,
     DPadRight,
+}
+
+impl PadButton {
+    /// All of them, in the order in which [`super::keys`] names them.
+    pub const ALL: [Self; 19] = [
+        Self::South,
+        Self::East,
+        Self::North,
+        Self::West,
+        Self::C,
+        Self::Z,
+        Self::LeftTrigger,
+        Self::LeftTrigger2,
+        Self::RightTrigger,
+        Self::RightTrigger2,
+        Self::Select,
+        Self::Start,
+        Self::Mode,
+        Self::LeftThumb,
+        Self::RightThumb,
+        Self::DPadUp,
+        Self::DPadDown,
+        Self::DPadLeft,
+        Self::DPadRight,
+    ];
 }
 
 /// An axis and whether its sign is turned; written `"LeftStickX"` or `"-LeftStickX"`.
@@ -331,4 +370,17 @@ pub struct ConsolePlan {
     pub socket: Option<PathBuf>,
     /// Whether the console may reset; default false.
     pub reset: bool,
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::keys;
+    use super::*;
+
+    /// The parser finds a name's place in the one list and takes what stands there in the other.
+    #[test]
+    fn names_and_values_of_axes_and_buttons_stand_in_one_order() {
+        assert_eq!(PadAxis::ALL.map(|it| format!("{it:?}"))[..], *keys::AXES);
+        assert_eq!(PadButton::ALL.map(|it| format!("{it:?}"))[..], *keys::BUTTONS);
+    }
 }

@@ -5,6 +5,7 @@ use serde::{Deserialize, Serialize};
 
 use super::{Cause, Event, MAX_LINKS};
 use crate::base::{PerWheel, Pose, Twist};
+use crate::config::{PadButton, PadPlan};
 use crate::shaping::{Frame, Sticks};
 use crate::units::Mono;
 use crate::wire::{Feedback, Identity, ToDrivers};
@@ -58,6 +59,20 @@ pub enum Puller {
     LinkGone,
 }
 
+impl Puller {
+    /// All of them.
+    pub const ALL: [Self; 8] = [
+        Self::Core,
+        Self::PadStop,
+        Self::PadGone,
+        Self::Console,
+        Self::Sentinel,
+        Self::Panic,
+        Self::SecondSignal,
+        Self::LinkGone,
+    ];
+}
+
 /// The pad as it is now, and what happened on it since the last tick.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct PadInput {
@@ -84,6 +99,26 @@ pub struct PadInput {
 pub struct Buttons(pub u8);
 
 impl Buttons {
+    /// A button that has a value goes down from here on, and comes up again below [`Self::UP_BELOW`]: gilrs' own
+    /// thresholds, which it applies to every button.
+    pub const DOWN_FROM: f64 = 0.75;
+    /// See [`Self::DOWN_FROM`].
+    pub const UP_BELOW: f64 = 0.65;
+
+    /// Which button of a pad means what; the hold control is none of them.
+    #[must_use]
+    pub const fn meanings(plan: &PadPlan) -> [(PadButton, Self); 7] {
+        [
+            (plan.ready, Self::READY),
+            (plan.reset, Self::RESET),
+            (plan.stop, Self::STOP),
+            (plan.pace_up, Self::PACE_UP),
+            (plan.pace_down, Self::PACE_DOWN),
+            (plan.frame, Self::FRAME),
+            (plan.zero_heading, Self::ZERO_HEADING),
+        ]
+    }
+
     /// Asks for Ready.
     pub const READY: Self = Self(1 << 0);
     /// Asks to end Tripped; must be held.

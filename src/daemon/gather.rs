@@ -69,7 +69,7 @@ impl Gather {
         for channels in channels.take(crate::core::MAX_LINKS) {
             inputs.links.push(LinkInput::default());
             simulated.push(None);
-            frame_bytes.push(2 + 6 + 2 * usize::from(channels) + 4 + 2);
+            frame_bytes.push(crate::wire::size::drive(usize::from(channels)));
         }
         Self { inputs, simulated, frame_bytes }
     }

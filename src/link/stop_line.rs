@@ -31,18 +31,6 @@ struct Arm {
     plain: AtomicU64,
 }
 
-/// Every puller, by its code less one.
-const PULLERS: [Puller; 8] = [
-    Puller::Core,
-    Puller::PadStop,
-    Puller::PadGone,
-    Puller::Console,
-    Puller::Sentinel,
-    Puller::Panic,
-    Puller::SecondSignal,
-    Puller::LinkGone,
-];
-
 impl StopLine {
     pub(super) fn new(slots: &[Arc<Slot>], tap: Tap) -> Self {
         let plain = u64::from_le_bytes(stop_plain(0, 1));
@@ -55,7 +43,7 @@ impl StopLine {
     /// gets an empty frame and the stop in one write.
     pub fn pull(&self, by: Puller) -> Pull {
         let number = self.inner.last.fetch_add(1, Ordering::SeqCst) + 1;
-        let code = PULLERS.iter().position(|it| *it == by).unwrap_or(0) as u64 + 1;
+        let code = Puller::ALL.iter().position(|it| *it == by).unwrap_or(0) as u64 + 1;
         // The latest pull is the one that a release must name.
         self.inner.state.fetch_max(number << 8 | code, Ordering::SeqCst);
         self.write();
@@ -71,7 +59,7 @@ impl StopLine {
     #[must_use]
     pub fn standing(&self) -> Option<Pull> {
         let state = self.inner.state.load(Ordering::SeqCst);
-        let by = *PULLERS.get(usize::try_from((state & 0xff).checked_sub(1)?).ok()?)?;
+        let by = *Puller::ALL.get(usize::try_from((state & 0xff).checked_sub(1)?).ok()?)?;
         Some(Pull { number: (state >> 8) as u32, by })
     }
 

@@ -5,10 +5,6 @@ use crate::core::io::{Buttons, PadInput};
 use crate::shaping::Sticks;
 use crate::units::Mono;
 
-/// A button is down from this value on and up below the other: gilrs' own thresholds.
-const DOWN_FROM: f64 = 0.75;
-const UP_BELOW: f64 = 0.65;
-
 /// Values by meaning, and the presses that nobody has taken yet.
 #[derive(Clone, Debug)]
 pub(super) struct State {
@@ -65,18 +61,12 @@ impl State {
             }
             return false;
         }
-        let meanings = [
-            (self.plan.ready, Buttons::READY),
-            (self.plan.reset, Buttons::RESET),
-            (self.plan.stop, Buttons::STOP),
-            (self.plan.pace_up, Buttons::PACE_UP),
-            (self.plan.pace_down, Buttons::PACE_DOWN),
-            (self.plan.frame, Buttons::FRAME),
-            (self.plan.zero_heading, Buttons::ZERO_HEADING),
-        ];
-        let Some((_, meaning)) = meanings.into_iter().find(|(it, _)| *it == button) else { return false };
+        let Some((_, meaning)) = Buttons::meanings(&self.plan).into_iter().find(|(it, _)| *it == button)
+        else {
+            return false;
+        };
         let was = self.input.down.has(meaning);
-        let down = value >= DOWN_FROM || (was && value >= UP_BELOW);
+        let down = value >= Buttons::DOWN_FROM || (was && value >= Buttons::UP_BELOW);
         self.input.down = if down { self.input.down.with(meaning) } else { self.input.down.without(meaning) };
         let pressed = down && !was && !held;
         if pressed {

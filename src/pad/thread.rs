@@ -145,7 +145,9 @@ impl<F: Fn(Puller)> Thread<F> {
     }
 
     fn button(&mut self, button: gilrs::Button, value: f64) {
-        let Some(button) = ALL_BUTTONS.into_iter().find(|it| choose::button(*it) == button) else { return };
+        let Some(button) = PadButton::ALL.into_iter().find(|it| choose::button(*it) == button) else {
+            return;
+        };
         if self.state.button(button, value, false) {
             (self.on_stop)(Puller::PadStop);
         }
@@ -201,7 +203,7 @@ impl<F: Fn(Puller)> Thread<F> {
 
     fn read_truth(&mut self, id: GamepadId, watch: &Watch) {
         let pad = self.gilrs.gamepad(id);
-        for axis in ALL_AXES {
+        for axis in PadAxis::ALL {
             if let Some(code) = pad.axis_code(choose::axis(axis))
                 && let Some(value) = axis_value(watch, code.into_u32())
             {
@@ -210,7 +212,7 @@ impl<F: Fn(Puller)> Thread<F> {
                 self.state.axis(axis, if down { 0.0 - value } else { value });
             }
         }
-        for button in ALL_BUTTONS {
+        for button in PadButton::ALL {
             // A trigger that is told as an axis, as in `event`.
             let meant = choose::button(button);
             let axis = TRIGGER_AXES.into_iter().find(|(_, it)| *it == meant).map(|(axis, _)| axis);
@@ -265,38 +267,5 @@ fn button_value(watch: &Watch, code: u32) -> Option<f64> {
 }
 
 fn ours(axis: gilrs::Axis) -> Option<PadAxis> {
-    ALL_AXES.into_iter().find(|it| choose::axis(*it) == axis)
+    PadAxis::ALL.into_iter().find(|it| choose::axis(*it) == axis)
 }
-
-const ALL_AXES: [PadAxis; 8] = [
-    PadAxis::LeftStickX,
-    PadAxis::LeftStickY,
-    PadAxis::LeftZ,
-    PadAxis::RightStickX,
-    PadAxis::RightStickY,
-    PadAxis::RightZ,
-    PadAxis::DPadX,
-    PadAxis::DPadY,
-];
-
-const ALL_BUTTONS: [PadButton; 19] = [
-    PadButton::South,
-    PadButton::East,
-    PadButton::North,
-    PadButton::West,
-    PadButton::C,
-    PadButton::Z,
-    PadButton::LeftTrigger,
-    PadButton::LeftTrigger2,
-    PadButton::RightTrigger,
-    PadButton::RightTrigger2,
-    PadButton::Select,
-    PadButton::Start,
-    PadButton::Mode,
-    PadButton::LeftThumb,
-    PadButton::RightThumb,
-    PadButton::DPadUp,
-    PadButton::DPadDown,
-    PadButton::DPadLeft,
-    PadButton::DPadRight,
-];

@@ -23,7 +23,7 @@ const QUEUE: usize = 1024;
 /// So often the queue is looked into. A receiver that waits would make whoever sends take a lock to wake it.
 const LOOK_MS: u64 = 10;
 /// The largest packet: a snapshot with the longest moving average.
-pub(super) const LARGEST: usize = 32 * 1024;
+pub(super) const LARGEST: usize = 64 * 1024;
 
 /// Why nothing can be recorded.
 #[derive(Debug, thiserror::Error)]

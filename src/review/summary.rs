@@ -95,8 +95,14 @@ struct Reading<'a> {
     late_s: Vec<f64>,
     last: Option<(Phase, [f64; 3])>,
     first: Option<Mono>,
-    /// The stop that is going on: index and since when every wheel stands.
+    /// The stop that is going on: its index and when it was decided.
     open: Option<(usize, Mono)>,
+    /// The first stop frame since the last tick that was not tripped: written, and so recorded, before its tick.
+    stop_frame: Option<Mono>,
+    /// The last tick that had feedback from every link.
+    fed: Option<Mono>,
+    /// Feedback was cut while the present stop went on: when the base came to stand was not seen.
+    blind: bool,
     sequence: [Option<u8>; 8],
 }
 
@@ -126,6 +132,9 @@ impl<'a> Reading<'a> {
             last: None,
             first: None,
             open: None,
+            stop_frame: None,
+            fed: None,
+            blind: false,
             sequence: [None; 8],
         }
     }
@@ -173,6 +182,9 @@ impl<'a> Reading<'a> {
             self.summary.skid_rad_s = self.summary.skid_rad_s.max(f64::from(tick.skid_rad_s));
         }
         self.standstill(tick);
+        if tick.phase != Phase::Tripped {
+            self.stop_frame = None;
+        }
         self.last = Some((tick.phase, tick.pose));
     }
 
@@ -193,7 +205,7 @@ impl<'a> Reading<'a> {
         };
         let Some((code, words)) = began else { return };
         let [turn, x, y] = tick.sent;
-        let first_stop_s = tick.stop_ramp_ms.map(|_| 0.0);
+        let first_stop_s = self.stop_frame.map(|at| at.since_s(tick.inputs.now));
         self.summary.stops.push(Stop {
             t_s: tick.inputs.now.since_s(self.origin),
             code,
@@ -207,10 +219,18 @@ impl<'a> Reading<'a> {
             pace: tick.pace,
         });
         self.open = Some((self.summary.stops.len() - 1, tick.inputs.now));
+        self.blind = false;
     }
 
     /// A stop is over when fresh feedback shows every wheel standing.
     fn standstill(&mut self, tick: &Tick) {
+        let now = tick.inputs.now;
+        let fresh = tick.inputs.links.iter().all(|it| it.feedback.is_some());
+        if fresh {
+            let quiet_ns = crate::units::s_to_ns(self.plan.guard.feedback_quiet_ms * 1e-3);
+            let gap = self.fed.replace(now).is_some_and(|last| now.since_ns(last) > quiet_ns);
+            self.blind |= gap;
+        }
         let Some((index, began)) = self.open else { return };
         let share = self.plan.guard.standstill_share;
         let stands = tick
@@ -218,13 +238,12 @@ impl<'a> Reading<'a> {
             .iter()
             .zip(&self.plan.wheels)
             .all(|(it, wheel)| f64::from(it.abs()) <= share * wheel.max_rad_s);
-        let fresh = tick.inputs.links.iter().all(|it| it.feedback.is_some());
-        if stands && fresh && !(tick.phase == Phase::Driving) {
-            if let Some(stop) = self.summary.stops.get_mut(index) {
-                stop.standstill_s = Some(tick.inputs.now.since_s(began));
-            }
+        if tick.phase == Phase::Driving {
             self.open = None;
-        } else if tick.phase == Phase::Driving {
+        } else if stands && fresh {
+            if let Some(stop) = self.summary.stops.get_mut(index) {
+                stop.standstill_s = (!self.blind).then(|| now.since_s(began));
+            }
             self.open = None;
         }
     }
@@ -238,13 +257,13 @@ impl<'a> Reading<'a> {
         match direction {
             Direction::ToDrivers => {
                 self.summary.frames_sent += 1;
-                let is_stop = plain.as_deref().and_then(<[u8]>::first) == Some(&kind::STOP);
-                if is_stop
-                    && let Some((index, began)) = self.open
-                    && let Some(stop) = self.summary.stops.get_mut(index)
-                    && stop.first_stop_s.is_none_or(|it| it <= 0.0)
-                {
-                    stop.first_stop_s = Some(at.since_s(began));
+                if plain.as_deref().and_then(<[u8]>::first) == Some(&kind::STOP) {
+                    self.stop_frame.get_or_insert(at);
+                    if let Some((index, began)) = self.open
+                        && let Some(stop) = self.summary.stops.get_mut(index)
+                    {
+                        stop.first_stop_s.get_or_insert(at.since_s(began));
+                    }
                 }
             }
             Direction::FromDrivers => {
@@ -264,5 +283,80 @@ impl<'a> Reading<'a> {
                 }
             }
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::core::Outputs;
+    use crate::core::cause::StopBy;
+    use crate::core::io::{Heard, Inputs, LinkInput};
+    use crate::wire::{Feedback, MAX_ON_LINE, ToDrivers, emit_to_drivers};
+
+    const MS: u64 = 1_000_000;
+
+    fn tick(at_ms: u64, phase: Phase, rad_s: f64, feedback: bool) -> Item {
+        let now = Mono::from_ns(at_ms * MS);
+        let heard = feedback.then(|| Heard { at: now, feedback: Feedback::default() });
+        let mut inputs = Inputs { now, due: now, ..Inputs::default() };
+        inputs.links.push(LinkInput { open: true, feedback: heard, ..LinkInput::default() });
+        let cause = (phase == Phase::Tripped).then_some(Cause::StopAsked(StopBy::PadButton));
+        let mut out = Outputs { phase, cause, ..Outputs::default() };
+        out.view.measured_rad_s = (0..4).map(|_| rad_s).collect();
+        Item::Tick(Box::new(Tick::new(&inputs, &out, 0)))
+    }
+
+    fn stop_frame(at_ns: u64) -> Item {
+        let mut bytes = [0; MAX_ON_LINE];
+        let len = emit_to_drivers(1, &ToDrivers::Stop { ramp_ms: 300 }, &mut bytes);
+        let bytes = bytes[..len].to_vec();
+        Item::Frame { at: Mono::from_ns(at_ns), link: 0, direction: Direction::ToDrivers, bytes }
+    }
+
+    fn read(items: &[Item]) -> Vec<Stop> {
+        let (plan, _) = parse(crate::config::EXAMPLE, "example").unwrap();
+        let mut reading = Reading::new(&plan, Mono::default());
+        items.iter().for_each(|it| reading.take(it));
+        reading.summary.stops
+    }
+
+    /// The tick writes the stop before it hands itself to the recorder, so in the file the frame stands first.
+    #[test]
+    fn the_first_stop_frame_is_the_one_recorded_before_its_tick() {
+        let stops = read(&[
+            tick(1000, Phase::Driving, 5.0, true),
+            stop_frame(1_005 * MS + 50_000),
+            tick(1005, Phase::Tripped, 5.0, true),
+            stop_frame(1_010 * MS),
+            tick(1010, Phase::Tripped, 0.0, true),
+        ]);
+        assert_eq!(stops.len(), 1);
+        assert!((stops[0].first_stop_s.unwrap() - 50e-6).abs() < 1e-9, "{:?}", stops[0].first_stop_s);
+        assert!((stops[0].standstill_s.unwrap() - 0.005).abs() < 1e-9);
+    }
+
+    #[test]
+    fn a_standstill_behind_cut_feedback_was_not_seen() {
+        let mut items = vec![tick(1000, Phase::Driving, 5.0, true)];
+        items.extend((1..100).map(|it| tick(1000 + 5 * it, Phase::Tripped, 5.0, false)));
+        items.push(tick(1500, Phase::Tripped, 0.0, true));
+        items.push(tick(1505, Phase::Tripped, 0.0, true));
+        assert_eq!(read(&items)[0].standstill_s, None);
+    }
+
+    #[test]
+    fn a_stop_frame_of_an_earlier_trip_does_not_count_for_the_next() {
+        let stops = read(&[
+            tick(1000, Phase::Driving, 5.0, true),
+            stop_frame(1_005 * MS),
+            tick(1005, Phase::Tripped, 0.0, true),
+            tick(2000, Phase::Ready, 0.0, true),
+            tick(2005, Phase::Driving, 5.0, true),
+            tick(2010, Phase::Tripped, 5.0, true),
+            stop_frame(2_013 * MS),
+            tick(2015, Phase::Tripped, 0.0, true),
+        ]);
+        assert!((stops[1].first_stop_s.unwrap() - 0.003).abs() < 1e-9, "{:?}", stops[1].first_stop_s);
     }
 }

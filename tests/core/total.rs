@@ -111,16 +111,7 @@ fn inputs() -> impl Strategy<Value = Inputs> {
     let pulls = prop_oneof![
         Just(None),
         (0..4_u32, 0..8_usize).prop_map(|(number, by)| {
-            let by = [
-                Puller::Core,
-                Puller::PadStop,
-                Puller::PadGone,
-                Puller::Console,
-                Puller::Sentinel,
-                Puller::Panic,
-                Puller::SecondSignal,
-                Puller::LinkGone,
-            ][by];
+            let by = Puller::ALL[by];
             Some(Pull { number, by })
         })
     ];

@@ -102,16 +102,7 @@ fn events() -> Vec<Event> {
         Event::TicksMissed { count: 3 },
         Event::PadQuiet { quiet_ms: 205 },
     ];
-    for by in [
-        Puller::Core,
-        Puller::PadStop,
-        Puller::PadGone,
-        Puller::Console,
-        Puller::Sentinel,
-        Puller::Panic,
-        Puller::SecondSignal,
-        Puller::LinkGone,
-    ] {
+    for by in Puller::ALL {
         all.push(Event::StopLinePulled(Pull { number: 1, by }));
     }
     all.extend(causes().into_iter().map(Event::Trip));

@@ -22,11 +22,6 @@ use crate::core::io::{Buttons, PadInput};
 use crate::shaping::Sticks;
 use crate::units::{Mono, s_to_ns};
 
-/// A value from here on makes a button go down: gilrs' own threshold, which it applies to every button.
-const DOWN_FROM: f64 = 0.75;
-/// A value below this makes it come up again; gilrs' own threshold.
-const UP_BELOW: f64 = 0.65;
-
 /// Hands that play a [`Script`], mapped through a [`PadPlan`] as a real pad is.
 #[derive(Clone, Debug)]
 pub struct Hands {
@@ -126,18 +121,9 @@ impl Hands {
 
     /// The set of buttons that are down, from their values and from which of them were down before.
     fn buttons(&self) -> Buttons {
-        let meanings = [
-            (self.plan.ready, Buttons::READY),
-            (self.plan.reset, Buttons::RESET),
-            (self.plan.stop, Buttons::STOP),
-            (self.plan.pace_up, Buttons::PACE_UP),
-            (self.plan.pace_down, Buttons::PACE_DOWN),
-            (self.plan.frame, Buttons::FRAME),
-            (self.plan.zero_heading, Buttons::ZERO_HEADING),
-        ];
         let mut set = Buttons::default();
-        for (button, meaning) in meanings {
-            let threshold = if self.down.has(meaning) { UP_BELOW } else { DOWN_FROM };
+        for (button, meaning) in Buttons::meanings(&self.plan) {
+            let threshold = if self.down.has(meaning) { Buttons::UP_BELOW } else { Buttons::DOWN_FROM };
             if self.plugged && self.values.button(button) >= threshold {
                 set = set.with(meaning);
             }
