@@ -4,6 +4,7 @@
 
 mod drive;
 mod guards;
+mod layouts;
 mod links;
 mod phases;
 mod replay;
