@@ -4,7 +4,7 @@
 //! file, thread, lock or random source, and cannot fail. [`wire`] turns bytes into values and back and knows nothing
 //! of ports. The shell ([`daemon`], [`pad`], [`link`], [`record`]) owns every file descriptor and every sleep.
 //!
-//! Modules may use those below them in this list, never those above: `check`, `review`, `rehearse`, `daemon`, `pad` /
+//! Modules may use those below them in this list, never those above: `check`, `review`, `rehearse`, `drill`, `measure`, `page`, `daemon`, `pad` /
 //! `link` / `record`, `standin`, `core`, `config`, `shaping`, `base`, `wire`, `units`; `sys` holds the system calls that have
 //! no safe wrapper and may be used by the shell alone.
 
@@ -13,8 +13,11 @@ pub mod check;
 pub mod config;
 pub mod core;
 pub mod daemon;
+pub mod drill;
 pub mod link;
+pub mod measure;
 pub mod pad;
+pub mod page;
 pub mod record;
 pub mod rehearse;
 pub mod review;

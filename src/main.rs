@@ -25,6 +25,7 @@ enum Command {
     Status(commands::status::Args),
     Stop(commands::stop::Args),
     Reset(commands::reset::Args),
+    Drill(commands::drill::Args),
     Standin(commands::standin::Args),
     Review(commands::review::Args),
 }
@@ -42,6 +43,7 @@ fn main() -> ExitCode {
         Command::Status(args) => commands::status::run(args),
         Command::Stop(args) => commands::stop::run(args),
         Command::Reset(args) => commands::reset::run(args),
+        Command::Drill(args) => commands::drill::run(args),
         Command::Standin(args) => commands::standin::run(args),
         Command::Review(args) => commands::review::run(args),
     };

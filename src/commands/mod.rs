@@ -2,6 +2,7 @@
 //! need is here: the exit statuses, and the one place that prints an error.
 
 pub(crate) mod check;
+pub(crate) mod drill;
 pub(crate) mod drive;
 pub(crate) mod pads;
 pub(crate) mod rehearse;

@@ -2,8 +2,9 @@
 
 use std::path::PathBuf;
 
+use gripline::measure::{Summary, summary};
 use gripline::record::reader::Run;
-use gripline::review::{Summary, summary, write_csv};
+use gripline::review::write_csv;
 use serde_json::{Value, json};
 
 use super::{Exit, fail, print, warn};

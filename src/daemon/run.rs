@@ -89,6 +89,7 @@ const LAST_WORDS_MS: u64 = 1000;
 /// When it cannot start; nothing has moved then.
 pub fn drive(plan: Plan, options: DriveOptions) -> Result<Ended, DriveError> {
     say(CAUTION);
+    sched::survive_file_limits();
     let origin = clock::now();
     if plan.tick.lock_memory
         && let Err(error) = sched::lock_memory()

@@ -5,7 +5,6 @@ mod path;
 mod report;
 mod run;
 mod script;
-mod truth;
 
 pub use report::{Report, Row};
 pub use run::{RehearseError, Wanted, rehearse};

@@ -1,9 +1,9 @@
 //! The path of the square against the ideal: legs straight along the room's axes, as long as the sent speed makes
 //! them, whatever the base's heading did meanwhile.
 
-use super::truth::Moment;
 use crate::base::Pose;
 use crate::core::io::Phase;
+use crate::measure::truth::Moment;
 use crate::record::Tick;
 use crate::shaping::Frame;
 

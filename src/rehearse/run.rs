@@ -1,21 +1,18 @@
 //! Starts the processes, cuts the line when it is time, and judges what came of it.
 
-use std::io::{BufRead, BufReader, Write};
 use std::path::{Path, PathBuf};
-use std::process::{Child, ChildStdin, Command, Stdio};
-use std::sync::mpsc;
 use std::time::Duration;
 
 use super::path::Ideal;
 use super::report::Report;
 use super::script::{self, whole_drive};
-use super::truth;
 use crate::config::{Plan, parse};
 use crate::core::Event;
-use crate::core::budget::{BudgetRow, Guard, budget};
+use crate::core::budget::budget;
+use crate::measure::child::{ChildError, Driving, Folder, PAD_THERE, Said, Standin, failed};
+use crate::measure::{Summary, summary, truth};
 use crate::record::Item;
 use crate::record::reader::{Run, RunError};
-use crate::review::{Stop, Summary, summary};
 use crate::sys::clock;
 use crate::units::Mono;
 
@@ -40,30 +37,16 @@ pub enum RehearseError {
     /// The configuration is wrong.
     #[error("{0}")]
     Config(String),
-    /// The system refused something.
-    #[error("cannot {what}: {source}; see to disk space and permissions")]
-    System {
-        /// What.
-        what: String,
-        /// Why.
-        source: std::io::Error,
-    },
-    /// A part ended early or said nothing.
-    #[error("{part} {what}; run it by itself to see why")]
-    Part {
-        /// Which.
-        part: &'static str,
-        /// What became of it.
-        what: String,
-    },
+    /// A part of it could not be run.
+    #[error(transparent)]
+    Child(#[from] ChildError),
     /// The run file cannot be read back.
     #[error(transparent)]
     Run(#[from] RunError),
 }
 
-fn failed(what: impl Into<String>) -> impl FnOnce(std::io::Error) -> RehearseError {
-    let what = what.into();
-    move |source| RehearseError::System { what, source }
+fn part(part: &'static str, what: impl Into<String>) -> RehearseError {
+    ChildError::Part { part, what: what.into() }.into()
 }
 
 /// Rehearses; `progress` hears a line for each thing that happens.
@@ -75,36 +58,26 @@ pub fn rehearse(wanted: &Wanted, progress: &mut dyn FnMut(&str)) -> Result<Repor
     let (plan, _) = parse(text, name).map_err(|all| {
         RehearseError::Config(all.iter().map(ToString::to_string).collect::<Vec<_>>().join("\n"))
     })?;
-    let dir = Folder::new()?;
-    let config = dir.path.join("base.toml");
-    std::fs::write(&config, text).map_err(failed("write into the temporary folder"))?;
+    let folder = Folder::new("rehearsal")?;
+    let config = folder.write("base.toml", text)?;
     let drive = wanted.hands.is_none().then(|| whole_drive(&plan, wanted.seconds));
     let hands = match (&wanted.hands, &drive) {
         (Some(path), _) => path.clone(),
-        (None, Some(drive)) => {
-            let path = dir.path.join("hands.csv");
-            std::fs::write(&path, &drive.hands).map_err(failed("write into the temporary folder"))?;
-            path
-        }
-        (None, None) => return Err(RehearseError::Part { part: "the script", what: "is missing".into() }),
+        (None, Some(drive)) => folder.write("hands.csv", &drive.hands)?,
+        (None, None) => return Err(part("the script", "is missing")),
     };
-    let mut standin = Standin::start(wanted, &config, &dir.path, &plan)?;
-    let (mut driving, lines) = start_drive(wanted, &config, &dir.path, &hands, &plan)?;
-    let outcome = follow(&lines, &mut standin, drive.as_ref(), wanted.seconds, progress);
-    let (run_path, cut_at) = match outcome {
-        Ok(it) => it,
-        Err(error) => {
-            let _ = driving.kill();
-            return Err(error);
-        }
-    };
-    let status = driving.wait().map_err(failed("wait for the drive"))?;
+    let mut standin = Standin::start(&wanted.program, &config, &folder, &plan)?;
+    let mut arguments = Driving::ports(&folder, &plan);
+    arguments.extend(["--hands".into(), hands.display().to_string()]);
+    let mut driving = Driving::start(&wanted.program, &config, &folder, &wanted.record_dir, arguments)?;
+    let cut_at = follow(&mut driving, &mut standin, drive.as_ref(), wanted.seconds, progress)?;
+    let status = driving.wait()?;
     standin.end();
-    let run_path = run_path.ok_or(RehearseError::Part {
-        part: "the drive",
-        what: format!("ended without a run file ({status})"),
-    })?;
-    let mut report = judge(&plan, &run_path, &dir.path.join("trace.csv"), drive.as_ref(), cut_at)?;
+    let run_path = driving
+        .run
+        .take()
+        .ok_or_else(|| part("the drive", format!("ended without a run file ({status})")))?;
+    let mut report = judge(&plan, &run_path, &folder.trace(), drive.as_ref(), cut_at)?;
     report.row(
         "end of the drive",
         if status.success() { "in order".into() } else { format!("{status}") },
@@ -114,130 +87,14 @@ pub fn rehearse(wanted: &Wanted, progress: &mut dyn FnMut(&str)) -> Result<Repor
     Ok(report)
 }
 
-/// A temporary folder that goes away with the rehearsal.
-struct Folder {
-    path: PathBuf,
-}
-
-impl Folder {
-    fn new() -> Result<Self, RehearseError> {
-        let path = std::env::temp_dir().join(format!("gripline-rehearsal-{}", std::process::id()));
-        std::fs::create_dir_all(&path).map_err(failed("make a temporary folder"))?;
-        Ok(Self { path })
-    }
-}
-
-impl Drop for Folder {
-    fn drop(&mut self) {
-        let _ = std::fs::remove_dir_all(&self.path);
-    }
-}
-
-struct Standin {
-    child: Child,
-    input: Option<ChildStdin>,
-}
-
-impl Standin {
-    fn start(wanted: &Wanted, config: &Path, dir: &Path, plan: &Plan) -> Result<Self, RehearseError> {
-        let links = dir.join("links");
-        let mut child = Command::new(&wanted.program)
-            .arg("standin")
-            .arg(config)
-            .arg("--link-dir")
-            .arg(&links)
-            .arg("--trace")
-            .arg(dir.join("trace.csv"))
-            .args(["--quiet", "--until-eof"])
-            .stdin(Stdio::piped())
-            .stdout(Stdio::null())
-            .spawn()
-            .map_err(failed("start the stand-in"))?;
-        let input = child.stdin.take();
-        let mut it = Self { child, input };
-        for _ in 0..500 {
-            if plan.links.iter().all(|link| links.join(&link.name).exists()) {
-                return Ok(it);
-            }
-            if let Ok(Some(status)) = it.child.try_wait() {
-                return Err(RehearseError::Part {
-                    part: "the stand-in",
-                    what: format!("ended at once ({status})"),
-                });
-            }
-            clock::sleep_ms(10);
-        }
-        Err(RehearseError::Part { part: "the stand-in", what: "made no ports within five seconds".into() })
-    }
-
-    fn say(&mut self, line: &str) {
-        if let Some(input) = &mut self.input {
-            let _ = writeln!(input, "{line}");
-            let _ = input.flush();
-        }
-    }
-
-    /// Lets it end by itself, so that its trace is whole.
-    fn end(&mut self) {
-        self.input = None;
-        for _ in 0..200 {
-            if matches!(self.child.try_wait(), Ok(Some(_))) {
-                return;
-            }
-            clock::sleep_ms(10);
-        }
-        let _ = self.child.kill();
-    }
-}
-
-impl Drop for Standin {
-    fn drop(&mut self) {
-        self.input = None;
-        let _ = self.child.kill();
-        let _ = self.child.wait();
-    }
-}
-
-fn start_drive(
-    wanted: &Wanted,
-    config: &Path,
-    dir: &Path,
-    hands: &Path,
-    plan: &Plan,
-) -> Result<(Child, mpsc::Receiver<String>), RehearseError> {
-    let mut command = Command::new(&wanted.program);
-    command.arg("drive").arg(config).arg("--hands").arg(hands).arg("--record-dir").arg(&wanted.record_dir);
-    command.arg("--socket").arg(dir.join("console.sock"));
-    for link in &plan.links {
-        command.arg("--port").arg(format!("{}={}", link.name, dir.join("links").join(&link.name).display()));
-    }
-    let mut child =
-        command.stdin(Stdio::null()).stdout(Stdio::piped()).spawn().map_err(failed("start the drive"))?;
-    let out = child.stdout.take();
-    let (tell, lines) = mpsc::channel();
-    std::thread::spawn(move || {
-        for line in out.into_iter().flat_map(|it| BufReader::new(it).lines()).map_while(Result::ok) {
-            if tell.send(line).is_err() {
-                return;
-            }
-        }
-    });
-    Ok((child, lines))
-}
-
-/// What the drive says when the hands begin to play.
-const HANDS_BEGIN: &str = "gamepad there";
-const RECORDING: &str = "recording to ";
-
-/// Listens to the drive to its end, and cuts and joins the line meanwhile. Gives the run file and when the line was cut.
+/// Listens to the drive to its end, and cuts and joins the line meanwhile. Gives when the line was cut.
 fn follow(
-    lines: &mpsc::Receiver<String>,
+    driving: &mut Driving,
     standin: &mut Standin,
     drive: Option<&script::Drive>,
     seconds: f64,
     progress: &mut dyn FnMut(&str),
-) -> Result<(Option<PathBuf>, Option<Mono>), RehearseError> {
-    let mut run = None;
+) -> Result<Option<Mono>, RehearseError> {
     let mut began: Option<Mono> = None;
     let (mut cut, mut joined): (Option<Mono>, bool) = (None, false);
     let started = clock::now();
@@ -258,23 +115,17 @@ fn follow(
             }
         }
         if now.since_s(started) > most_s {
-            return Err(RehearseError::Part {
-                part: "the drive",
-                what: format!("did not end within {most_s:.0} s"),
-            });
+            return Err(part("the drive", format!("did not end within {most_s:.0} s")));
         }
-        match lines.recv_timeout(Duration::from_millis(5)) {
-            Ok(line) => {
-                if let Some(path) = line.strip_prefix(RECORDING) {
-                    run = Some(PathBuf::from(path));
-                }
-                if began.is_none() && line.contains(HANDS_BEGIN) {
+        match driving.said(Duration::from_millis(5)) {
+            Said::Line(line) => {
+                if began.is_none() && line.contains(PAD_THERE) {
                     began = Some(clock::now());
                 }
                 progress(&line);
             }
-            Err(mpsc::RecvTimeoutError::Timeout) => {}
-            Err(mpsc::RecvTimeoutError::Disconnected) => return Ok((run, cut)),
+            Said::Nothing => {}
+            Said::Ended => return Ok(cut),
         }
     }
 }
@@ -288,10 +139,7 @@ fn judge(
     cut_at: Option<Mono>,
 ) -> Result<Report, RehearseError> {
     let truth = truth::read(trace).map_err(failed("read the stand-in's trace"))?;
-    let refused = |why: String| RehearseError::Part {
-        part: "the run file",
-        what: format!("has a configuration that is refused: {why}"),
-    };
+    let refused = |why: String| part("the run file", format!("has a configuration that is refused: {why}"));
     let (it, _) = summary(&mut Run::open(run_path)?).map_err(refused)?;
     let (ideal, origin) = ideal(plan, run_path, drive)?;
     let mut report = Report {
@@ -332,6 +180,9 @@ fn judge(
         it.packets_lost == 0,
     );
     let [median, p99, most] = it.late_s.map(|it| it * 1e3);
+    if !report.ok() && report.too_late.is_none() {
+        report.too_late = truth::held_up(&truth, 0.0, f64::INFINITY);
+    }
     report.figure("ticks late", format!("median {median:.2} ms, 99 % {p99:.2} ms, most {most:.2} ms"));
     Ok(report)
 }
@@ -397,7 +248,7 @@ fn stops(
             Some(cut) if whole && index == 3 => cut.ns() as f64 * 1e-9,
             Some(_) | None => decided_s,
         };
-        let row = row_of(&rows, plan, stop);
+        let row = stop.row(&rows);
         let measured = truth::stop(truth, began_s, plan);
         match (measured, row.and_then(|it| it.total_s.zip(it.distance_m))) {
             (Some((seconds, metres)), Some((total_s, distance_m))) => report.row(
@@ -420,28 +271,6 @@ fn stops(
     }
 }
 
-/// The budget's row of a stop.
-fn row_of<'a>(rows: &'a [BudgetRow], plan: &Plan, stop: &Stop) -> Option<&'a BudgetRow> {
-    let guard = match stop.code.as_str() {
-        "release" | "quit" => Guard::Release,
-        "pad-quiet" if plan.pad.wired => Guard::PadQuietStream,
-        "pad-quiet" => Guard::PadQuietChange,
-        "stop-pad" | "stop-squeeze" | "stop-console" | "stop-input" => Guard::StopAsked,
-        "pad-gone" => Guard::PadGone,
-        "feedback-quiet" => Guard::FeedbackQuiet,
-        "not-heard" => Guard::NotHeard,
-        "write-fails" => Guard::WriteFails,
-        "late-tick" | "no-tick" => Guard::LateTick,
-        "driver-says" | "found-latched" => Guard::DriverSays,
-        "not-following" => Guard::NotFollowing,
-        "not-slowing" => Guard::NotSlowing,
-        "runaway" => Guard::Runaway,
-        "skid" => Guard::Skid,
-        _ => return None,
-    };
-    rows.iter().find(|it| it.guard == guard && it.pace == usize::from(stop.pace))
-}
-
 /// A machine on which ticks come too late says nothing about the program.
 fn too_late(plan: &Plan, it: &Summary) -> Option<String> {
     let [_, p99, most] = it.late_s;
@@ -453,16 +282,4 @@ fn too_late(plan: &Plan, it: &Summary) -> Option<String> {
     (p99 > period_s).then(|| {
         format!("one tick in a hundred was more than {:.1} ms late (most {:.1} ms)", p99 * 1e3, most * 1e3)
     })
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-    use crate::core::words;
-
-    #[test]
-    fn the_drive_says_what_is_listened_for() {
-        let (plan, _) = parse(crate::config::EXAMPLE, "example").unwrap();
-        assert_eq!(words::event(&Event::Pad { present: true }, &plan), HANDS_BEGIN);
-    }
 }

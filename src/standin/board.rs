@@ -60,6 +60,7 @@ pub(super) struct Board {
     coming: VecDeque<(Mono, Command)>,
     acting: Command,
     latch_itself: bool,
+    blocked: bool,
     stop_input_open: bool,
     fault_bits: u16,
     scaled: bool,
@@ -105,6 +106,7 @@ impl Board {
             measured,
             coming: VecDeque::new(),
             latch_itself: false,
+            blocked: false,
             stop_input_open: false,
             fault_bits: 0,
             scaled: false,
@@ -157,6 +159,11 @@ impl Board {
         self.says.take(now, out);
     }
 
+    /// Whether its end of the line takes nothing any more.
+    pub(super) fn blocked(&self) -> bool {
+        self.blocked
+    }
+
     /// Whether its motors have torque.
     pub(super) fn torque(&self) -> bool {
         self.acting.torque
@@ -200,7 +207,9 @@ impl Board {
             LinkFault::Mute => self.says.cut = true,
             LinkFault::Deaf => self.hears.cut = true,
             LinkFault::Cut => (self.says.cut, self.hears.cut) = (true, true),
+            LinkFault::Blocked => self.blocked = true,
             LinkFault::Sound => {
+                self.blocked = false;
                 for way in [&mut self.says, &mut self.hears] {
                     way.cut = false;
                     way.set_lossy(0.0);

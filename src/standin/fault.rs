@@ -43,7 +43,9 @@ pub enum LinkFault {
     Deaf,
     /// Both.
     Cut,
-    /// The line is sound again: no mute, deaf, cut, lossy, noisy, slow.
+    /// The drivers' end takes no more bytes: what is written waits, until nothing more can be written.
+    Blocked,
+    /// The line is sound again: no mute, deaf, cut, blocked, lossy, noisy, slow.
     Sound,
     /// Each frame is lost with this probability, both ways.
     Lossy(f64),
@@ -152,6 +154,7 @@ pub const HELP: &str = "\
 mute [LINK]               the drivers say nothing
 deaf [LINK]               the drivers hear nothing
 cut [LINK]                both
+blocked [LINK]            the drivers' end takes no more bytes: what is written to it waits
 sound [LINK]              the line is well again
 lossy P [LINK]            each frame is lost with probability P, both ways; 0 ends it
 noisy P [LINK]            each bit flips with probability P, both ways; 0 ends it
@@ -190,6 +193,7 @@ pub fn parse(line: &str, plan: &Plan) -> Result<Asked, FaultMistake> {
         "mute" => reader.link(LinkFault::Mute),
         "deaf" => reader.link(LinkFault::Deaf),
         "cut" => reader.link(LinkFault::Cut),
+        "blocked" => reader.link(LinkFault::Blocked),
         "sound" => reader.link(LinkFault::Sound),
         "restart" => reader.link(LinkFault::Restart),
         "latch" => reader.link(LinkFault::Latch),
@@ -364,7 +368,7 @@ mod tests {
             assert!(asked.is_ok_and(|asked| asked != Asked::Nothing), "{line}");
             words += 1;
         }
-        assert_eq!(words, 22);
+        assert_eq!(words, 23);
         for word in ["over-temperature", "under-voltage", "encoder"] {
             assert!(HELP.contains(word) && parse(word, &plan()).is_ok());
         }

@@ -126,7 +126,8 @@ pub fn start(
     if let Some(dir) = &settings.link_dir {
         served.make_links(plan, dir, &ports)?;
     }
-    let server = Server { sim, ports, trace, stop, on_news };
+    let blocked = vec![false; ports.len()];
+    let server = Server { sim, ports, blocked, trace, stop, on_news };
     let thread = std::thread::Builder::new().name("stand-in".to_owned()).spawn(move || server.run());
     served.thread = Some(thread.map_err(ServeError::Thread)?);
     Ok(served)
@@ -213,6 +214,8 @@ fn lock(sim: &Mutex<Sim>) -> MutexGuard<'_, Sim> {
 struct Server<F> {
     sim: Arc<Mutex<Sim>>,
     ports: Vec<Port>,
+    /// Which of them are left unread.
+    blocked: Vec<bool>,
     trace: Option<Trace<BufWriter<File>>>,
     stop: Arc<AtomicBool>,
     on_news: F,
@@ -222,7 +225,8 @@ impl<F: FnMut(ServeNews)> Server<F> {
     fn run(mut self) {
         let mut flush_at = Mono::default();
         while !self.stop.load(Ordering::Relaxed) {
-            wait_any(self.ports.iter().filter_map(Port::descriptor), WAIT_MS);
+            let open = self.ports.iter().zip(&self.blocked).filter(|(_, blocked)| !**blocked);
+            wait_any(open.filter_map(|(port, _)| port.descriptor()), WAIT_MS);
             let now = clock::now();
             self.turn(now);
             if now >= flush_at {
@@ -242,10 +246,13 @@ impl<F: FnMut(ServeNews)> Server<F> {
             sim.step(now);
             for (link, (port, said)) in self.ports.iter_mut().zip(&mut said).enumerate() {
                 let mut heard = Vec::new();
-                news.extend(port.read(now, &mut heard).map(|news| (link, news)));
+                if !sim.is_blocked(link) {
+                    news.extend(port.read(now, &mut heard).map(|news| (link, news)));
+                }
                 sim.bytes_in(link, &heard);
                 sim.bytes_out(link, said);
             }
+            self.blocked = (0..self.ports.len()).map(|link| sim.is_blocked(link)).collect();
             sim.truth()
         };
         for (link, (port, said)) in self.ports.iter_mut().zip(&said).enumerate() {

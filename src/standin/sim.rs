@@ -153,6 +153,12 @@ impl Sim {
         }
     }
 
+    /// Whether the drivers' end of a link takes no bytes: whoever carries them leaves them on the line.
+    #[must_use]
+    pub fn is_blocked(&self, link: usize) -> bool {
+        self.boards.get(link).is_some_and(Board::blocked)
+    }
+
     /// How things truly are.
     #[must_use]
     pub fn truth(&self) -> Truth {

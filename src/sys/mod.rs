@@ -2,6 +2,7 @@
 //! it; the pure parts never do.
 
 pub mod clock;
+pub mod disturb;
 pub mod evdev;
 pub mod sched;
 pub mod serial;

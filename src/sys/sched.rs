@@ -87,6 +87,13 @@ pub fn no_timer_slack() {
     let _ = unsafe { libc::prctl(libc::PR_SET_TIMERSLACK, 1) };
 }
 
+/// A file that may not grow any more (a limit of the shell or of the service) is an error of the write, not the end of
+/// the program.
+pub fn survive_file_limits() {
+    // SAFETY: ignoring a signal runs no code of ours.
+    let _ = unsafe { libc::signal(libc::SIGXFSZ, libc::SIG_IGN) };
+}
+
 /// Touches the stack that the calling thread will need, so that no page fault comes later.
 pub fn touch_stack() {
     let touched = [1_u8; 96 * 1024];

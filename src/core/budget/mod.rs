@@ -10,6 +10,7 @@ mod motion;
 pub use motion::PaceMotion;
 
 use super::Cause;
+use super::cause::DriverTrouble;
 use super::settings::ASSUMED_DRIVER_MS;
 use crate::config::{Plan, StopCategory};
 use crate::units::deg;
@@ -44,6 +45,8 @@ pub enum Guard {
     LateTick,
     /// A driver reports trouble.
     DriverSays,
+    /// A driver starts anew, and is without torque from then on whatever the host does.
+    DriverRestart,
     /// A wheel away from its command.
     NotFollowing,
     /// A wheel that goes on in a ramp; counted from the ramp's start.
@@ -58,7 +61,7 @@ pub enum Guard {
 
 impl Guard {
     /// All of them, in the order in which they are printed.
-    pub const ALL: [Self; 15] = [
+    pub const ALL: [Self; 16] = [
         Self::Release,
         Self::StopAsked,
         Self::PadGone,
@@ -69,6 +72,7 @@ impl Guard {
         Self::WriteFails,
         Self::LateTick,
         Self::DriverSays,
+        Self::DriverRestart,
         Self::NotFollowing,
         Self::NotSlowing,
         Self::Runaway,
@@ -90,6 +94,7 @@ impl Guard {
             Self::WriteFails => "write fails",
             Self::LateTick => "late tick",
             Self::DriverSays => "driver says",
+            Self::DriverRestart => "driver restart",
             Self::NotFollowing => "not following",
             Self::NotSlowing => "not slowing",
             Self::Runaway => "runaway",
@@ -108,6 +113,7 @@ impl Guard {
             Cause::NotHeard { .. } => Some(Self::NotHeard),
             Cause::WriteFailed { .. } => Some(Self::WriteFails),
             Cause::LateTick { .. } | Cause::NoTick => Some(Self::LateTick),
+            Cause::DriverSays { what: DriverTrouble::Restarted, .. } => Some(Self::DriverRestart),
             Cause::DriverSays { .. } => Some(Self::DriverSays),
             Cause::NotFollowing { .. } => Some(Self::NotFollowing),
             Cause::NotSlowing { .. } => Some(Self::NotSlowing),
@@ -133,6 +139,7 @@ impl Guard {
             | Self::WriteFails
             | Self::LateTick
             | Self::DriverSays
+            | Self::DriverRestart
             | Self::NotFollowing
             | Self::NotSlowing
             | Self::Runaway
@@ -146,6 +153,7 @@ impl Guard {
             Self::StopAsked if plan.guard.stop_category == StopCategory::Zero => Kind::Coast,
             Self::NotSlowing | Self::Runaway => Kind::Coast,
             Self::HostSilent => Kind::Silence,
+            Self::DriverRestart => Kind::Gone,
             Self::StopAsked
             | Self::PadGone
             | Self::FeedbackQuiet
@@ -164,7 +172,7 @@ impl Guard {
         let period_s = plan.tick.period_s();
         let valid_s = plan.links.iter().map(|it| f64::from(it.valid_ms) * 1e-3).fold(0.0, f64::max);
         match self {
-            Self::Release | Self::StopAsked | Self::PadGone => 0.0,
+            Self::Release | Self::StopAsked | Self::PadGone | Self::DriverRestart => 0.0,
             Self::PadQuietStream => guard.pad_quiet_stream_ms * 1e-3,
             Self::PadQuietChange => guard.pad_quiet_change_ms * 1e-3,
             Self::FeedbackQuiet => guard.feedback_quiet_ms * 1e-3,
@@ -198,6 +206,8 @@ enum Kind {
     Silence,
     /// The stop line; torque off at once: category 0.
     Coast,
+    /// The torque is gone by itself: category 0.
+    Gone,
 }
 
 /// One guard at one pace. `None` stands for what cannot be known without `coast_m_s2`.
@@ -247,8 +257,8 @@ fn row(plan: &Plan, pace: usize, motion: &PaceMotion, guard: Guard) -> BudgetRow
     let kind = guard.kind(plan);
     let v = motion.outermost_m_s;
     let (tick_s, wire_s) = match kind {
-        // Counted from the last frame taken; nobody has to send anything.
-        Kind::Silence => (0.0, 0.0),
+        // Counted from the last frame taken, or from the driver's own end; nobody has to send anything.
+        Kind::Silence | Kind::Gone => (0.0, 0.0),
         Kind::Host | Kind::Drivers | Kind::Coast => {
             (plan.tick.period_s(), plan.links.iter().map(motion::wire_s).fold(0.0, f64::max))
         }
@@ -257,7 +267,7 @@ fn row(plan: &Plan, pace: usize, motion: &PaceMotion, guard: Guard) -> BudgetRow
     let ramp_s = match kind {
         Kind::Host => Some(motion.host_ramp_s),
         Kind::Drivers | Kind::Silence => Some(motion.driver_ramp_s),
-        Kind::Coast => plan.bay.coast_m_s2.map(|it| v / it),
+        Kind::Coast | Kind::Gone => plan.bay.coast_m_s2.map(|it| v / it),
     };
     let (detect_s, driver_s) = (guard.detect_s(plan), driver_s(plan));
     let before_s = detect_s + tick_s + wire_s + driver_s;
@@ -267,7 +277,7 @@ fn row(plan: &Plan, pace: usize, motion: &PaceMotion, guard: Guard) -> BudgetRow
         category: match kind {
             Kind::Host => 2,
             Kind::Drivers | Kind::Silence => 1,
-            Kind::Coast => 0,
+            Kind::Coast | Kind::Gone => 0,
         },
         pace,
         detect_s,

@@ -195,6 +195,7 @@ fn an_idle_base_sleeps() {
         sim: Arc::new(Mutex::new(Sim::new(&plan(), 1, SimSettings::default()))),
         ports: open_ports(&plan(), &[]).unwrap(),
         trace: None,
+        blocked: vec![false; 2],
         stop: Arc::default(),
         on_news: |_| {},
     };

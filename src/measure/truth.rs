@@ -8,15 +8,20 @@ use crate::config::Plan;
 
 /// One row of the trace.
 #[derive(Clone, Debug, Default, PartialEq)]
-pub(super) struct Moment {
+pub struct Moment {
     /// On the monotonic clock, seconds.
-    pub(super) t_s: f64,
-    pub(super) pose: Pose,
-    pub(super) wheel_rad_s: Vec<f64>,
+    pub t_s: f64,
+    /// Where it is.
+    pub pose: Pose,
+    /// How fast each wheel turns.
+    pub wheel_rad_s: Vec<f64>,
 }
 
 /// Reads a trace; a torn last line is left out.
-pub(super) fn read(path: &Path) -> std::io::Result<Vec<Moment>> {
+///
+/// # Errors
+/// When there is none.
+pub fn read(path: &Path) -> std::io::Result<Vec<Moment>> {
     let file = BufReader::new(std::fs::File::open(path)?);
     Ok(file.lines().map_while(Result::ok).skip(1).filter_map(|line| moment(&line)).collect())
 }
@@ -29,8 +34,21 @@ fn moment(line: &str) -> Option<Moment> {
     Some(Moment { t_s: *t_s, pose, wheel_rad_s: wheels.to_vec() })
 }
 
+/// Longer than this between two rows the stand-in itself was held up: then its wheels answer late, and nothing can be
+/// told of the drive.
+const HELD_UP_S: f64 = 0.02;
+
+/// Whether the stand-in was held up between two moments, in words.
+#[must_use]
+pub fn held_up(truth: &[Moment], from_s: f64, to_s: f64) -> Option<String> {
+    let within = truth.iter().filter(|it| (from_s..=to_s).contains(&it.t_s));
+    let gaps = within.clone().zip(within.skip(1)).map(|(a, b)| b.t_s - a.t_s);
+    let most = gaps.fold(0.0, f64::max);
+    (most > HELD_UP_S).then(|| format!("the stand-in itself was held up for {:.0} ms", most * 1e3))
+}
+
 /// How a stop truly went: seconds until every wheel stood for good, and the way of the outermost point meanwhile.
-pub(super) fn stop(truth: &[Moment], from_s: f64, plan: &Plan) -> Option<(f64, f64)> {
+pub fn stop(truth: &[Moment], from_s: f64, plan: &Plan) -> Option<(f64, f64)> {
     let start = truth.iter().position(|it| it.t_s >= from_s)?;
     let share = plan.guard.standstill_share;
     let stands = |it: &Moment| {

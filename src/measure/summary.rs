@@ -1,6 +1,7 @@
 //! A run in figures: how long, which stops, how late, how much was lost.
 
 use crate::config::{Plan, parse};
+use crate::core::budget::{BudgetRow, Guard};
 use crate::core::io::Phase;
 use crate::core::{Cause, Event, words};
 use crate::record::reader::Run;
@@ -17,6 +18,8 @@ pub struct Stop {
     pub code: String,
     /// In words.
     pub words: String,
+    /// The guard whose budget it is held against, where it has one.
+    pub guard: Option<Guard>,
     /// The phase it came in.
     pub from: Phase,
     /// Until the first stop frame was written; `None` for stops by the host.
@@ -31,6 +34,14 @@ pub struct Stop {
     pub from_rad_s: f64,
     /// Index of the pace.
     pub pace: u8,
+}
+
+impl Stop {
+    /// Its row of the budget.
+    #[must_use]
+    pub fn row<'a>(&self, rows: &'a [BudgetRow]) -> Option<&'a BudgetRow> {
+        rows.iter().find(|it| Some(it.guard) == self.guard && it.pace == usize::from(self.pace))
+    }
 }
 
 /// The figures of a run.
@@ -103,6 +114,8 @@ struct Reading<'a> {
     fed: Option<Mono>,
     /// Feedback was cut while the present stop went on: when the base came to stand was not seen.
     blind: bool,
+    /// The pad's reports keep coming while it is still.
+    streams: bool,
     sequence: [Option<u8>; 8],
 }
 
@@ -135,6 +148,7 @@ impl<'a> Reading<'a> {
             stop_frame: None,
             fed: None,
             blind: false,
+            streams: false,
             sequence: [None; 8],
         }
     }
@@ -155,6 +169,7 @@ impl<'a> Reading<'a> {
         {
             stop.code = "pad-quiet".into();
             stop.words = words::event(event, self.plan);
+            stop.guard = Some(if self.streams { Guard::PadQuietStream } else { Guard::PadQuietChange });
         }
         if let Event::FramesRefused { count, .. } = event {
             self.summary.frames_refused += u64::from(*count);
@@ -185,6 +200,9 @@ impl<'a> Reading<'a> {
         if tick.phase != Phase::Tripped {
             self.stop_frame = None;
         }
+        if tick.inputs.pad.present {
+            self.streams = tick.inputs.pad.streams;
+        }
         self.last = Some((tick.phase, tick.pose));
     }
 
@@ -195,21 +213,22 @@ impl<'a> Reading<'a> {
                 let quit = tick.inputs.quit;
                 let code = if quit { "quit" } else { "release" };
                 let words = if quit { "the end was asked" } else { "hold released" };
-                Some((code.to_owned(), words.to_owned()))
+                Some((code.to_owned(), words.to_owned(), Some(Guard::Release)))
             }
             (Phase::Ready | Phase::Driving | Phase::Stopping, Phase::Tripped) => tick
                 .cause
                 .as_ref()
-                .map(|cause: &Cause| (cause.code().to_owned(), words::cause(cause, self.plan))),
+                .map(|it: &Cause| (it.code().to_owned(), words::cause(it, self.plan), Guard::of(it))),
             _ => None,
         };
-        let Some((code, words)) = began else { return };
+        let Some((code, words, guard)) = began else { return };
         let [turn, x, y] = tick.sent;
         let first_stop_s = self.stop_frame.map(|at| at.since_s(tick.inputs.now));
         self.summary.stops.push(Stop {
             t_s: tick.inputs.now.since_s(self.origin),
             code,
             words,
+            guard,
             from: before,
             first_stop_s,
             standstill_s: None,
