@@ -122,7 +122,7 @@ fn every_row_is_the_sum_of_its_parts() {
         }
         let skids = usize::from(plan.wheels.len() > 3);
         let on_change = usize::from(!plan.pad.wired);
-        assert_eq!(rows.len(), plan.paces.len() * (13 + skids + on_change));
+        assert_eq!(rows.len(), plan.paces.len() * (14 + skids + on_change));
     }
 }
 
@@ -147,6 +147,7 @@ fn guards_are_seen_after_their_own_times() {
         (Guard::Runaway, 0.395),
         (Guard::Skid, 0.6),
         (Guard::HostSilent, 0.1),
+        (Guard::DriverRestart, 0.0),
     ] {
         near(detect(guard), expected_s, 1e-12);
     }
@@ -295,8 +296,13 @@ fn every_trip_has_its_guard() {
     assert_eq!(Guard::of(&Cause::StopAsked(StopBy::Squeeze)), Some(Guard::StopAsked));
     assert_eq!(Guard::of(&Cause::NoTick), Some(Guard::LateTick));
     assert_eq!(
-        Guard::of(&Cause::DriverSays { link: 0, what: DriverTrouble::Restarted }),
+        Guard::of(&Cause::DriverSays { link: 0, what: DriverTrouble::IdentityChanged }),
         Some(Guard::DriverSays)
+    );
+    // One that starts anew is without torque at once: no ramp, and nobody's stop would be quicker.
+    assert_eq!(
+        Guard::of(&Cause::DriverSays { link: 0, what: DriverTrouble::Restarted }),
+        Some(Guard::DriverRestart)
     );
     assert_eq!(Guard::of(&Cause::NotCleared { link: 0 }), None);
     let mut names: Vec<_> = Guard::ALL.iter().map(|it| it.name()).collect();

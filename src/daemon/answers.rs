@@ -8,6 +8,7 @@ use serde_json::{Value, json};
 
 use super::board::{Board, Standing};
 use super::gather::Asked;
+use super::request::{Request, request};
 use crate::config::Plan;
 use crate::core::io::{Phase, Puller};
 use crate::core::words;
@@ -46,24 +47,20 @@ pub(super) struct Pending {
 impl Shared {
     /// Answers one line.
     pub(super) fn answer(&self, line: &[u8], now: Mono) -> Answer {
-        let request = match serde_json::from_slice::<Value>(line) {
-            Ok(request) => request,
-            Err(error) => return refused(&format!("not a line of JSON: {error}"), None),
-        };
-        match request.get("ask").and_then(Value::as_str) {
-            Some("status") => Answer::Now(self.status(now)),
-            Some("stop") => {
+        match request(line) {
+            Ok(Request::Status) => Answer::Now(self.status(now)),
+            Ok(Request::Stop) => {
                 self.asked.stop.store(true, Ordering::Relaxed);
                 // At once, without waiting for the tick.
                 let pull = self.stop.pull(Puller::Console);
                 Answer::Now(json!({ "done": "stop", "pull": pull.number, "pid": std::process::id() }))
             }
-            Some("reset") => self.reset(&request, now),
-            Some(_) | None => refused("unknown request; ask for \"status\", \"stop\" or \"reset\"", None),
+            Ok(Request::Reset { in_sight }) => self.reset(in_sight, now),
+            Err(why) => refused(&why, None),
         }
     }
 
-    fn reset(&self, request: &Value, now: Mono) -> Answer {
+    fn reset(&self, in_sight: bool, now: Mono) -> Answer {
         let Some(standing) = self.board.read().filter(|it| now.since_ns(it.at) < ALIVE_NS) else {
             return refused("no tick answers; `gripline stop CONFIG` reaches the drivers all the same", None);
         };
@@ -74,7 +71,7 @@ impl Shared {
                 cause,
             );
         }
-        if request.get("in_sight") != Some(&Value::Bool(true)) {
+        if !in_sight {
             return refused("a reset is only for somebody who sees the base: say --in-sight", cause);
         }
         if standing.phase != Phase::Tripped {

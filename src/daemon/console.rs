@@ -13,6 +13,7 @@ use std::sync::Arc;
 use serde_json::Value;
 
 use super::answers::{Answer, Pending, Shared};
+use super::request::{Heard, LONGEST, Line};
 use super::socket::Socket;
 use crate::sys::{clock, socket};
 use crate::units::Mono;
@@ -21,8 +22,6 @@ use crate::units::Mono;
 const CLIENTS: usize = 16;
 /// So many are let in at one turn, so that each is heard before a flood of newcomers can push it out.
 const NEW_AT_A_TURN: usize = 4;
-/// The longest line of a client.
-const LONGEST: usize = 1024;
 /// Half a line, or an answer that is not read, is waited for so long.
 const PATIENCE_NS: u64 = 2_000_000_000;
 /// So often an answer that waits for the tick is looked after.
@@ -100,8 +99,14 @@ impl Server {
             if self.clients.len() >= CLIENTS {
                 drop_longest_silent(&mut self.clients);
             }
-            let mut client =
-                Client { stream, line: Vec::new(), out: Vec::new(), last: now, pending: None, gone: false };
+            let mut client = Client {
+                stream,
+                line: Line::default(),
+                out: Vec::new(),
+                last: now,
+                pending: None,
+                gone: false,
+            };
             client.turn(now, &self.shared);
             self.clients.push(client);
         }
@@ -116,8 +121,8 @@ fn drop_longest_silent(clients: &mut Vec<Client>) {
 
 struct Client {
     stream: UnixStream,
-    /// What has come of a line that is not whole yet; at most [`LONGEST`].
-    line: Vec<u8>,
+    /// What has come of a line that is not whole yet.
+    line: Line,
     /// What the client has still to read. Nothing more is answered before it has.
     out: Vec<u8>,
     /// When it last said a whole line, or came, or read.
@@ -149,16 +154,15 @@ impl Client {
 
     fn hear(&mut self, bytes: &[u8], now: Mono, shared: &Shared) {
         for &byte in bytes {
-            if byte != b'\n' {
-                self.line.push(byte);
-                if self.line.len() >= LONGEST {
+            let line = match self.line.push(byte) {
+                Heard::Part => continue,
+                Heard::Whole(line) => line,
+                Heard::TooLong => {
                     self.gone = true;
                     return;
                 }
-                continue;
-            }
+            };
             self.last = now;
-            let line = std::mem::take(&mut self.line);
             match shared.answer(&line, now) {
                 Answer::Now(answer) => self.say(&answer),
                 // What follows in the same breath is dropped: a client asks one thing at a time.

@@ -7,6 +7,7 @@ mod board;
 mod console;
 mod gather;
 mod printer;
+pub mod request;
 mod run;
 mod sentinel;
 mod service;

@@ -1,7 +1,7 @@
 //! Reading a run back, one packet at a time, as far as it is sound.
 
 use std::fs::File;
-use std::io::{BufReader, Read};
+use std::io::{self, BufReader, Read};
 use std::path::{Path, PathBuf};
 
 use pcap_file::pcapng::blocks::enhanced_packet::EnhancedPacketOption;
@@ -45,7 +45,7 @@ pub enum RunError {
 
 /// A run, open for reading.
 pub struct Run {
-    reader: PcapNgReader<BufReader<File>>,
+    reader: PcapNgReader<BufReader<Box<dyn Read>>>,
     /// Text of the configuration that it was driven with.
     pub config: String,
     /// The program that wrote it.
@@ -64,15 +64,23 @@ impl Run {
     /// # Errors
     /// When it cannot be read, or is no run file of this program or an older one.
     pub fn open(path: &Path) -> Result<Self, RunError> {
+        let file = File::open(path).map_err(|source| RunError::Read { path: path.into(), source })?;
+        Self::read(path, Box::new(file))
+    }
+
+    /// Reads a run from wherever it comes; `path` is what to call it.
+    ///
+    /// # Errors
+    /// When it is no run of this program or an older one.
+    pub fn read(path: &Path, mut from: Box<dyn Read>) -> Result<Self, RunError> {
         let not = |why: String| RunError::NotARun { path: path.into(), why };
-        let mut file = File::open(path).map_err(|source| RunError::Read { path: path.into(), source })?;
         let mut magic = [0; 4];
-        file.read_exact(&mut magic).map_err(|_| not("it is too short".into()))?;
+        from.read_exact(&mut magic).map_err(|_| not("it is too short".into()))?;
         if magic != [0x0a, 0x0d, 0x0d, 0x0a] {
             return Err(not("it is no capture file".into()));
         }
-        let file = File::open(path).map_err(|source| RunError::Read { path: path.into(), source })?;
-        let reader = PcapNgReader::new(BufReader::with_capacity(256 * 1024, file))
+        let whole: Box<dyn Read> = Box::new(io::Cursor::new(magic).chain(from));
+        let reader = PcapNgReader::new(BufReader::with_capacity(256 * 1024, whole))
             .map_err(|it| not(it.to_string()))?;
         let (mut config, mut program) = (String::new(), String::new());
         let (mut format, mut origin, mut wall_ns) = (None, Mono::default(), 0);
