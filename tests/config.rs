@@ -127,3 +127,15 @@ fn the_defaults_in_the_words_of_the_reference_are_those_that_are_taken() {
     assert_eq!(plan.guard.driver_ms, None);
     assert_eq!(plan.pad.hold_squeeze, None);
 }
+
+/// A file of something else: as many mistakes as anybody reads, the rest counted, and at once.
+#[test]
+fn a_file_of_something_else_is_refused_at_once() {
+    let lines: String = (0..50_000).map(|it| format!("k{it} = 1\n")).collect();
+    let mistakes = parse(&format!("[base]\n{lines}"), "log.toml").unwrap_err();
+    assert_eq!(mistakes.len(), 100);
+    assert!(mistakes[99].what.ends_with("more mistakes; mend these first)"), "{}", mistakes[99].what);
+    // One that never ends, too.
+    let why = gripline::config::load(std::path::Path::new("/dev/zero")).unwrap_err().to_string();
+    assert!(why.contains("larger than 1 MiB"), "{why}");
+}

@@ -50,7 +50,7 @@ pub(crate) fn run(args: Args) -> Exit {
 /// What is wrong; and what the wheels alone tell, where they can be read and one motion is impossible.
 fn refused(path: &Path, as_json: bool, error: &ConfigError) -> Exit {
     if let ConfigError::Wrong(_) = error
-        && let Some(wheels) = std::fs::read_to_string(path).ok().and_then(|it| config::wheels(&it))
+        && let Some(wheels) = config::small_text(path).ok().and_then(|it| config::wheels(&it))
     {
         let geometry: Vec<_> = wheels.iter().map(|it| it.1).collect();
         let analysis = analyse(&geometry);

@@ -101,7 +101,7 @@ fn set_up(args: &Args) -> Result<Setup, Exit> {
     let program = std::env::current_exe().map_err(|error| {
         fail(Exit::Hardware, format_args!("cannot find this program itself: {error}; is /proc mounted?"))
     })?;
-    let text = std::fs::read_to_string(&args.config).map_err(|error| {
+    let text = config::small_text(&args.config).map_err(|error| {
         fail(
             Exit::CouldNotRun,
             format_args!(

@@ -2,6 +2,7 @@
 
 use std::path::PathBuf;
 
+use gripline::config;
 use gripline::daemon::{self, DriveError, DriveOptions, Ended};
 use gripline::standin::hands::Script;
 
@@ -95,7 +96,7 @@ fn offer_paces_that_fit(plan: &mut gripline::config::Plan) -> Result<(), String>
 }
 
 fn read_hands(path: &std::path::Path) -> Result<Script, Exit> {
-    let text = std::fs::read_to_string(path).map_err(|error| {
+    let text = config::small_text(path).map_err(|error| {
         fail(
             Exit::CouldNotRun,
             format_args!(

@@ -33,7 +33,7 @@ pub(crate) fn run(args: Args) -> Exit {
     }
     let config = match &args.config {
         None => (config::EXAMPLE.to_owned(), "the built-in example".to_owned()),
-        Some(path) => match std::fs::read_to_string(path) {
+        Some(path) => match config::small_text(path) {
             Ok(text) => (text, path.display().to_string()),
             Err(error) => {
                 return fail(

@@ -9,7 +9,7 @@ mod reader;
 mod reference;
 
 pub use mistake::Mistake;
-pub use parse::{ConfigError, load, parse, wheels};
+pub use parse::{ConfigError, load, parse, small_text, wheels};
 pub use plan::*;
 
 /// The configuration that `rehearse` uses unless another is given.

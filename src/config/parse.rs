@@ -1,5 +1,6 @@
 //! From text to a checked [`Plan`], or to everything that is wrong with it.
 
+use std::io::{self, Read};
 use std::path::{Path, PathBuf};
 
 use toml::de::DeTable;
@@ -39,13 +40,28 @@ fn many(mistakes: &[Mistake]) -> String {
     format!("{} {mistakes} in {file}; nothing was started\n{}", all.len(), all.join("\n"))
 }
 
+/// Files that people write are small; what is larger is something else, or has no end.
+const LARGEST: u64 = 1 << 20;
+
+/// Reads a file that a person has written, at most 1 MiB of it.
+///
+/// # Errors
+/// When it cannot be read, is larger, or is no text.
+pub fn small_text(path: &Path) -> io::Result<String> {
+    let mut text = String::new();
+    let read = std::fs::File::open(path)?.take(LARGEST + 1).read_to_string(&mut text)?;
+    if read as u64 > LARGEST {
+        return Err(io::Error::other("it is larger than 1 MiB, so it is something else"));
+    }
+    Ok(text)
+}
+
 /// Reads and checks a file.
 ///
 /// # Errors
 /// When it cannot be read, or with everything that is wrong with it.
 pub fn load(path: &Path) -> Result<(Plan, Vec<Mistake>), ConfigError> {
-    let text =
-        std::fs::read_to_string(path).map_err(|source| ConfigError::Read { path: path.into(), source })?;
+    let text = small_text(path).map_err(|source| ConfigError::Read { path: path.into(), source })?;
     parse(&text, &path.display().to_string()).map_err(ConfigError::Wrong)
 }
 
@@ -64,9 +80,7 @@ pub fn parse(text: &str, file: &str) -> Result<(Plan, Vec<Mistake>), Vec<Mistake
     }
     // With broken syntax what was read of the tree may be anything: what follows from it would mislead.
     let plan = if broken.is_empty() { plan(&notes, &root) } else { None };
-    let mut mistakes = notes.mistakes.into_inner();
-    mistakes.sort_by_key(|it| (it.line, it.column));
-    mistakes.dedup();
+    let mistakes = notes.in_order();
     match plan {
         Some(plan) if mistakes.is_empty() => Ok((plan, notes.warnings.into_inner())),
         Some(_) | None => Err(mistakes),

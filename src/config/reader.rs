@@ -1,6 +1,6 @@
 //! Takes values out of the spanned tree, checks each against its row of the table of keys, and collects what is wrong.
 
-use std::cell::RefCell;
+use std::cell::{Cell, RefCell};
 use std::ops::Range;
 
 use toml::Spanned;
@@ -9,21 +9,42 @@ use toml::de::{DeTable, DeValue};
 use super::Mistake;
 use super::keys::{self, Kind, TABLES};
 
+/// Nobody reads more mistakes than this in one go; a file of something else has one in every line.
+const MOST: usize = 100;
+
 /// Where mistakes gather while a file is read.
 pub(super) struct Notes<'a> {
     pub(super) file: &'a str,
     pub(super) text: &'a str,
     pub(super) mistakes: RefCell<Vec<Mistake>>,
+    /// Mistakes beyond [`MOST`]: only counted.
+    more: Cell<usize>,
     pub(super) warnings: RefCell<Vec<Mistake>>,
 }
 
 impl<'a> Notes<'a> {
     pub(super) fn new(file: &'a str, text: &'a str) -> Self {
-        Self { file, text, mistakes: RefCell::default(), warnings: RefCell::default() }
+        Self { file, text, mistakes: RefCell::default(), more: Cell::new(0), warnings: RefCell::default() }
     }
 
     pub(super) fn wrong(&self, span: &Range<usize>, what: impl Into<String>) {
-        self.mistakes.borrow_mut().push(Mistake::at(self.file, self.text, span, what.into()));
+        let mut mistakes = self.mistakes.borrow_mut();
+        if mistakes.len() < MOST {
+            mistakes.push(Mistake::at(self.file, self.text, span, what.into()));
+        } else {
+            self.more.set(self.more.get() + 1);
+        }
+    }
+
+    /// All of them, in the order of the file.
+    pub(super) fn in_order(&self) -> Vec<Mistake> {
+        let mut mistakes = self.mistakes.take();
+        mistakes.sort_by_key(|it| (it.line, it.column));
+        mistakes.dedup();
+        if let (1.., Some(last)) = (self.more.get(), mistakes.last_mut()) {
+            last.what += &format!(" (and {} more mistakes; mend these first)", self.more.get());
+        }
+        mistakes
     }
 
     pub(super) fn warn(&self, span: &Range<usize>, what: impl Into<String>) {

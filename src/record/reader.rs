@@ -139,7 +139,7 @@ impl Run {
             };
             self.packets += 1;
             // Stamps were made from the monotonic clock and the wall clock at the start, so this is exact.
-            let at = Mono::from_ns(self.origin.ns() + at_ns.saturating_sub(self.wall_ns));
+            let at = self.origin.plus_ns(at_ns.saturating_sub(self.wall_ns));
             let item = if sound { item(lane, at, &data) } else { None };
             match item {
                 Some(item) => return Some(item),
