@@ -1,5 +1,6 @@
 //! The pad's thread.
 
+use std::path::PathBuf;
 use std::time::Duration;
 
 use crossbeam_channel::bounded;
@@ -32,6 +33,8 @@ const WAIT: Duration = Duration::from_millis(4);
 const PAUSE_MS: u64 = 2;
 /// Without a pad, so often one is looked for.
 const LOOK_EVERY_NS: u64 = 250_000_000;
+/// The device of raw reports may be made, and given to us, a little after that of events.
+const RAW_WITHIN_NS: u64 = 10_000_000_000;
 /// Reports in one second of a still pad from which on it counts as streaming.
 const STREAM_FROM: u32 = 10;
 
@@ -75,7 +78,11 @@ pub fn start(plan: &PadPlan, on_stop: impl Fn(Puller) + Send + 'static) -> Resul
 struct Held {
     id: GamepadId,
     watch: Watch,
+    /// Its device.
+    path: PathBuf,
     raw: Option<RawReports>,
+    /// When raw reports are to be looked for again, and until when at all.
+    raw_sought: (Mono, Mono),
     /// Reports and events of the present second.
     second: (Mono, u32, u32),
     last_told: Mono,
@@ -160,6 +167,10 @@ impl<F: Fn(Puller)> Thread<F> {
             self.lose();
             return;
         }
+        if held.raw.is_none() && now < held.raw_sought.1 && now >= held.raw_sought.0 {
+            held.raw = RawReports::beside(&held.path);
+            held.raw_sought.0 = now.plus_ns(LOOK_EVERY_NS);
+        }
         let Some(raw) = &mut held.raw else { return };
         let reports = raw.count();
         if reports > 0 {
@@ -196,8 +207,9 @@ impl<F: Fn(Puller)> Thread<F> {
         let Some((id, watch, path)) = choose(&self.gilrs, &self.plan) else { return };
         self.state.plugged(now);
         self.read_truth(id, &watch);
-        let raw = RawReports::beside(&path);
-        self.held = Some(Held { id, watch, raw, second: (now, 0, 0), last_told: now });
+        let raw_sought = (now, now.plus_ns(RAW_WITHIN_NS));
+        self.held =
+            Some(Held { id, watch, path, raw: None, raw_sought, second: (now, 0, 0), last_told: now });
         self.changed = true;
     }
 
