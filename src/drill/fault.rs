@@ -1,6 +1,6 @@
 //! The faults that a drill provokes: who does it, what must come of it, and what it is held against.
 
-use crate::config::Plan;
+use crate::config::{Plan, WheelPlan};
 use crate::core::budget::Guard;
 
 /// One fault.
@@ -83,7 +83,7 @@ pub enum Harm {
 impl Harm {
     /// The line that asks the stand-in for it.
     pub(super) fn line(self, plan: &Plan, pace: usize) -> String {
-        let wheel = plan.wheels.first().map_or("", |it| it.name.as_str());
+        let wheel = fastest(plan).map_or("", |it| it.name.as_str());
         let link = plan.links.first().map_or("", |it| it.name.as_str());
         match self {
             Self::CutBoth => "cut".into(),
@@ -97,7 +97,8 @@ impl Harm {
             Self::StickWheel => format!("stuck {wheel}"),
             Self::RunWheelAway => format!("runaway {:.3} {wheel}", runaway_share(plan, pace)),
             Self::KillEncoder => format!("dead-encoder {wheel}"),
-            Self::LoseGrip => format!("skid 3 {wheel}"),
+            // As far from its command as a wheel that is stuck.
+            Self::LoseGrip => format!("skid 2 {wheel}"),
         }
     }
 
@@ -108,9 +109,16 @@ impl Harm {
     }
 }
 
+/// The wheel that turns fastest when the base drives straight ahead: what is wrong with it shows.
+fn fastest(plan: &Plan) -> Option<&WheelPlan> {
+    let wheels = plan.wheels.iter().zip(plan.layout.rows());
+    let share = |(wheel, row): &(&WheelPlan, &[f64; 3])| libm::fabs(row[1]) / wheel.max_rad_s;
+    wheels.max_by(|a, b| share(a).total_cmp(&share(b))).map(|it| it.0)
+}
+
 /// As fast as the pace, and well above what the guard lets pass.
 fn runaway_share(plan: &Plan, pace: usize) -> f64 {
-    let Some((wheel, pace)) = plan.wheels.first().zip(plan.paces.get(pace)) else { return 0.1 };
+    let Some((wheel, pace)) = fastest(plan).zip(plan.paces.get(pace)) else { return 0.1 };
     let share = pace.pace.travel_m_s / (wheel.geometry.radius_m * wheel.max_rad_s);
     share.clamp(2.0 * plan.guard.runaway_share, 1.0)
 }
