@@ -310,3 +310,13 @@ fn every_trip_has_its_guard() {
     names.dedup();
     assert_eq!(names.len(), Guard::ALL.len());
 }
+
+/// 0.25 m/s on wheels of 50 mm is 5 rad/s; of 24 or 30 rad/s at most, 10 % is less, a quarter is more.
+#[test]
+fn a_pace_too_slow_to_see_a_stuck_wheel_at_is_told() {
+    let mut plan = plan(EXAMPLE);
+    let told = |plan: &Plan| warnings(plan).iter().any(|it| it.contains("stuck is not seen"));
+    assert!(!told(&plan));
+    plan.guard.follow_share = 0.4;
+    assert!(told(&plan), "{:?}", warnings(&plan));
+}

@@ -12,7 +12,7 @@ pub use motion::PaceMotion;
 use super::Cause;
 use super::cause::DriverTrouble;
 use super::settings::ASSUMED_DRIVER_MS;
-use crate::config::{Plan, StopCategory};
+use crate::config::{Plan, StopCategory, WheelPlan};
 use crate::units::deg;
 use crate::wire::size;
 
@@ -351,6 +351,7 @@ pub fn warnings(plan: &Plan) -> Vec<String> {
             ));
         }
     }
+    all.extend(stuck_unseen(plan));
     if plan.bay.clear_m.is_none() {
         all.push(
             "`clear_m` of [bay] is not given: the stopping distances are compared with nothing".to_owned(),
@@ -364,4 +365,28 @@ pub fn warnings(plan: &Plan) -> Vec<String> {
         );
     }
     all
+}
+
+/// Wheels that the slowest pace never turns fast enough for a stuck one to be told from a sound one.
+fn stuck_unseen(plan: &Plan) -> Option<String> {
+    let pace = plan.paces.first()?;
+    let unseen = |(wheel, row): &(&WheelPlan, &[f64; 3])| {
+        let most = libm::hypot(row[1], row[2]) * pace.pace.travel_m_s;
+        most <= plan.guard.follow_share * wheel.max_rad_s
+    };
+    let names: Vec<String> = plan
+        .wheels
+        .iter()
+        .zip(plan.layout.rows())
+        .filter(unseen)
+        .map(|(wheel, _)| format!("\"{}\"", wheel.name))
+        .collect();
+    (!names.is_empty()).then(|| {
+        format!(
+            "at pace \"{}\" travel never turns {} faster than `follow_share` lets pass: one that is stuck is not seen at \
+             that pace; lower `follow_share`, or start with a faster pace",
+            pace.name,
+            names.join(", ")
+        )
+    })
 }
