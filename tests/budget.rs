@@ -132,6 +132,10 @@ fn guards_are_seen_after_their_own_times() {
     plan.guard.driver_ms = Some(15.0);
     plan.pad.wired = false;
     let detect = |guard| row(&plan, guard, 0).detect_s;
+    // The next feedback answers the next frame, at 200 Hz, and is 38 bytes of ten bits long with two channels (DESIGN:
+    // section 5); drivers that refuse frames send it every 20 ms.
+    let line_s = 380.0 / 460_800.0;
+    let (answered_s, unanswered_s) = (0.005 + line_s, 0.02 + line_s);
     for (guard, expected_s) in [
         (Guard::Release, 0.0),
         (Guard::StopAsked, 0.0),
@@ -142,10 +146,12 @@ fn guards_are_seen_after_their_own_times() {
         (Guard::NotHeard, 0.1),
         (Guard::WriteFails, 0.1),
         (Guard::LateTick, 0.05),
-        (Guard::NotFollowing, 0.515),
-        (Guard::NotSlowing, 0.215),
-        (Guard::Runaway, 0.395),
-        (Guard::Skid, 0.6),
+        (Guard::DriverSays, unanswered_s),
+        (Guard::NotFollowing, 0.515 + answered_s),
+        (Guard::NotSlowing, 0.215 + unanswered_s),
+        // 0.1 rad at 5 % of 20 rad/s.
+        (Guard::Runaway, 0.395 + 0.1 + answered_s),
+        (Guard::Skid, 0.6 + answered_s),
         (Guard::HostSilent, 0.1),
         (Guard::DriverRestart, 0.0),
     ] {

@@ -87,7 +87,7 @@ pub enum Cause {
     SecondSignal,
     /// A thread of the program panicked.
     Panic,
-    /// A driver was latched when the program started or a port was opened.
+    /// A driver was latched, or had torque on, when the program started or a port was opened.
     FoundLatched {
         /// The link.
         link: u8,

@@ -19,7 +19,10 @@ impl Core {
                 Frame::Base => Frame::Room,
                 Frame::Room => Frame::Base,
             };
-            self.shaper.request_frame(self.state.frame);
+            // A stop goes on in the frame in which it began; the one asked comes when it is over, see `shape`.
+            if self.state.phase != Phase::Stopping {
+                self.shaper.request_frame(self.state.frame);
+            }
         }
         if pressed.has(Buttons::ZERO_HEADING) {
             let fell_rad = self.state.wheels.odometry.zero_heading();
@@ -47,6 +50,7 @@ impl Core {
     pub(super) fn shape(&mut self, inputs: &Inputs, out: &mut Outputs) {
         let goal = match self.state.phase {
             Phase::Parked | Phase::Ready | Phase::Tripped => {
+                self.shaper.request_frame(self.state.frame);
                 self.state.sent.push(Twist::ZERO, self.settings.kept_every);
                 return;
             }

@@ -2,7 +2,7 @@
 
 use super::Core;
 use super::event::{Event, Request, Wait, say};
-use super::io::{Buttons, Inputs, Outputs};
+use super::io::{Buttons, Inputs, Outputs, Phase};
 use super::phase::Happening;
 use super::step::{Seen, ms};
 use crate::units::{Mono, s_to_ns};
@@ -65,6 +65,9 @@ impl Core {
         if let Some(quiet) = quiet {
             say(out, Event::PadQuiet { quiet_ms: ms(quiet) });
         }
+        // A stop goes on in the frame in which it begins. The wheels' limits of the other one, where a change was under
+        // way, could make it longer than the budget says.
+        self.shaper.request_frame(self.shaper.frame());
         let period_s = self.shaper.settings().period_s;
         let ramp_ns = s_to_ns(f64::from(self.shaper.ticks_to_rest()) * period_s);
         let allowed_ns = ramp_ns + self.settings.times.stop_margin_ns;
@@ -87,8 +90,13 @@ impl Core {
         }
     }
 
-    /// The ramp for a stop by the drivers now: that of the faster of what is sent and what they may still be at.
+    /// The ramp for a stop by the drivers now: that of the faster of what is sent and what they may still be at. In
+    /// Parked the base should stand; where it does not, it moves as somebody before us told it, and a ramp that is too
+    /// short would take the torque off a base at speed.
     pub(super) fn ramp_ms(&self) -> u16 {
+        if self.state.phase == Phase::Parked {
+            return self.settings.longest_ramp_ms;
+        }
         let settings = self.shaper.settings();
         let ramp_of = |twist| {
             let speeds = settings.layout.wheel_speeds(twist);

@@ -44,7 +44,8 @@ impl Core {
             if clearing && let Some(token) = clear_due(link, inputs.now) {
                 put(link.send(inputs.now), ToDrivers::Clear { token });
             }
-            let Some(mode) = mode.filter(|_| link.as_planned()) else {
+            // A Park would take the torque off drivers that somebody else left at speed, so they are heard first.
+            let Some(mode) = mode.filter(|_| link.as_planned() && link.heard.is_some()) else {
                 link.pause();
                 continue;
             };

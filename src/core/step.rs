@@ -151,8 +151,12 @@ impl Core {
         }
         if first || zero {
             let ramp_ms = if zero { 0 } else { self.ramp_ms() };
-            let from = self.shaper.settings().layout.wheel_speeds(self.state.sent.newest());
-            self.state.driver_stop = Some(DriverStop::new(now, ramp_ms, from));
+            self.state.driver_stop = Some(if self.state.phase == Phase::Parked {
+                DriverStop::of_others(now, ramp_ms)
+            } else {
+                let from = self.shaper.settings().layout.wheel_speeds(self.state.sent.newest());
+                DriverStop::new(now, ramp_ms, from)
+            });
         }
         self.state.stop_by = None;
         self.state.reset_since = None;

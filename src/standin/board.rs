@@ -187,7 +187,10 @@ impl Board {
 
     /// Takes a reading of its yaw gyro.
     pub(super) fn read_gyro(&mut self, turn_rad_s: f64, settings: &SimSettings) {
-        let noise = settings.gyro_noise_rad_s * self.chance.normal();
+        let noise = match settings.gyro_noise_rad_s {
+            0.0 => 0.0,
+            spread => spread * self.chance.normal(),
+        };
         let reading = (turn_rad_s + settings.gyro_bias_rad_s + noise) * YAW_COUNTS_PER_RAD_S;
         // A cast from float to integer takes what is out of range to the nearest end: so does a gyro.
         self.measured.yaw_rate = self.yaw_valid.then_some(libm::round(reading) as i16);

@@ -9,7 +9,7 @@ use crate::base::{PerWheel, Pose, Twist};
 use crate::config::Plan;
 use crate::units::{Mono, ns_to_s};
 
-/// The longest stretch over which commands count as constant: a motor driver's own loop runs about this fast.
+/// The usual [`SimSettings::stretch_ns`]: a motor driver's own loop runs about this fast.
 const STRETCH_NS: u64 = 500_000;
 /// How fast a wheel without torque takes on the speed at which the floor drags it, seconds.
 const DRAG_LAG_S: f64 = 0.02;
@@ -38,6 +38,8 @@ pub struct SimSettings {
     pub silence_ms: u16,
     /// The longest ramp that the drivers make.
     pub ramp_max_ms: u16,
+    /// The longest stretch over which commands count as constant. Longer ones are coarser and cost less.
+    pub stretch_ns: u64,
 }
 
 impl Default for SimSettings {
@@ -52,6 +54,7 @@ impl Default for SimSettings {
             supply_v: 24.0,
             silence_ms: 1000,
             ramp_max_ms: 10_000,
+            stretch_ns: STRETCH_NS,
         }
     }
 }
@@ -128,7 +131,7 @@ impl Sim {
             }
         };
         while now < to {
-            let stretch_ns = to.since_ns(now).min(STRETCH_NS);
+            let stretch_ns = to.since_ns(now).min(self.settings.stretch_ns.max(1));
             now = now.plus_ns(stretch_ns);
             self.move_wheels(now, ns_to_s(stretch_ns));
             self.measure();
@@ -172,6 +175,15 @@ impl Sim {
         }
     }
 
+    /// What the drivers make their wheels turn at now, rad/s at the wheel; zero without torque.
+    #[must_use]
+    pub fn commanded_rad_s(&self) -> PerWheel<f64> {
+        let target = |wheel: &SimWheel| {
+            self.boards.get(wheel.mount.link).map_or(0.0, |board| wheel.mount.target_rad_s(board))
+        };
+        self.wheels.iter().map(target).collect()
+    }
+
     /// Makes something go wrong, or right again.
     pub fn fault(&mut self, fault: Fault) {
         match fault {
@@ -213,7 +225,11 @@ impl Sim {
         for board in &mut self.boards {
             board.act(now, self.settings.dead_time_s);
         }
-        let turned = if self.boards.iter().any(Board::torque) { self.push(dt_s) } else { self.coast(dt_s) };
+        let torque = self.boards.iter().any(Board::torque);
+        if !torque && self.wheels.iter().all(|wheel| wheel.speed_rad_s == 0.0) {
+            return;
+        }
+        let turned = if torque { self.push(dt_s) } else { self.coast(dt_s) };
         self.floor.roll(&turned);
         for (wheel, turned_rad) in self.wheels.iter_mut().zip(&turned) {
             if wheel.fault != WheelFault::EncoderDead {
@@ -243,7 +259,12 @@ impl Sim {
     /// Some wheels have torque, the others are dragged along. Gives the angle that each wheel has turned.
     fn push(&mut self, dt_s: f64) -> PerWheel<f64> {
         let speeds = self.wheels.iter().map(|wheel| wheel.speed_rad_s).collect();
-        let dragged = self.floor.dragged(self.floor.twist(&speeds));
+        // Only wheels without torque are.
+        let dragged = if self.boards.iter().all(Board::torque) {
+            speeds
+        } else {
+            self.floor.dragged(self.floor.twist(&speeds))
+        };
         let targets = self.targets();
         let lag_s = self.settings.lag_s;
         let together: Vec<Progress> = (0..self.boards.len())

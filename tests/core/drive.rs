@@ -374,3 +374,31 @@ fn pace_frame_and_heading_buttons_do_what_they_say() {
     world.tap(Buttons::FRAME);
     assert_eq!((world.out.view.pace, world.out.view.frame), (1, Frame::Room));
 }
+
+/// The stop was given its time for the frame in which it began; in the room's frame it can take longer.
+#[test]
+fn a_frame_asked_in_a_stop_comes_after_it() {
+    let mut world = World::new(four_mecanum()).into_stopping();
+    assert_eq!(world.out.view.frame, Frame::Base);
+    world.tap(Buttons::FRAME);
+    while world.phase() == Phase::Stopping {
+        assert_eq!(world.out.view.frame, Frame::Base);
+        world.tick();
+    }
+    assert_eq!((world.phase(), world.out.view.frame), (Phase::Ready, Frame::Room));
+}
+
+/// A change of frame waits until the motion is inside both frames' limits; a stop does not wait with it.
+#[test]
+fn a_frame_asked_before_a_stop_and_not_yet_taken_comes_after_it() {
+    let mut world = World::new(four_mecanum()).at_speed(1.0, 0.0, 0.0);
+    world.tap(Buttons::FRAME);
+    assert_eq!(world.out.view.frame, Frame::Base);
+    world.hold(0.0);
+    world.tick();
+    while world.phase() == Phase::Stopping {
+        assert_eq!(world.out.view.frame, Frame::Base);
+        world.tick();
+    }
+    assert_eq!((world.phase(), world.out.view.frame), (Phase::Ready, Frame::Room));
+}

@@ -4,6 +4,7 @@
 
 mod drive;
 mod guards;
+mod inherited;
 mod layouts;
 mod links;
 mod phases;

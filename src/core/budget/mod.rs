@@ -14,6 +14,7 @@ use super::cause::DriverTrouble;
 use super::settings::ASSUMED_DRIVER_MS;
 use crate::config::{Plan, StopCategory, WheelPlan};
 use crate::units::deg;
+use crate::wire::driver::FEEDBACK_EVERY_US;
 use crate::wire::size;
 
 /// Walking speed of a person, ISO 13855:2010, 5.2 (K for the body, in m/s).
@@ -180,16 +181,16 @@ impl Guard {
             // The host sees it within a tick, but whoever hears nothing any more goes on until validity runs out.
             Self::WriteFails => valid_s.max(period_s),
             Self::LateTick => guard.late_ms * 1e-3,
-            // Until the next feedback, which answers each frame, and while it is on the line.
-            Self::DriverSays => {
-                let feedback =
-                    plan.links.iter().map(|it| it.seconds(size::feedback(usize::from(it.channels))));
-                period_s + feedback.fold(0.0, f64::max)
+            Self::DriverSays => heard_unanswered_s(plan),
+            Self::NotFollowing => guard.follow_s + driver_s(plan) + heard_s(plan),
+            Self::NotSlowing => guard.slowing_s + driver_s(plan) + heard_unanswered_s(plan),
+            // Told to stand for a while, and then turned by its angle at the least speed that counts.
+            Self::Runaway => {
+                let slowest = plan.wheels.iter().map(|it| it.max_rad_s).fold(f64::INFINITY, f64::min);
+                let turns_s = guard.runaway_rad / (guard.runaway_share * slowest);
+                driver_s(plan) + guard.follow_lag_s + guard.runaway_s + turns_s + heard_s(plan)
             }
-            Self::NotFollowing => guard.follow_s + driver_s(plan),
-            Self::NotSlowing => guard.slowing_s + driver_s(plan),
-            Self::Runaway => driver_s(plan) + guard.follow_lag_s + guard.runaway_s,
-            Self::Skid => guard.skid_s,
+            Self::Skid => guard.skid_s + heard_s(plan),
             Self::HostSilent => valid_s,
         }
     }
@@ -290,6 +291,19 @@ fn row(plan: &Plan, pace: usize, motion: &PaceMotion, guard: Guard) -> BudgetRow
         distance_m: ramp_s.map(|it| v * (before_s + smoothing_s / 2.0) + v * it / 2.0),
         person_m: total_s.map(|it| WALKING_M_S * it),
     }
+}
+
+/// Until the next feedback, which answers each frame, and while it is on the line.
+fn heard_s(plan: &Plan) -> f64 {
+    let feedback = plan.links.iter().map(|it| it.seconds(size::feedback(usize::from(it.channels))));
+    plan.tick.period_s() + feedback.fold(0.0, f64::max)
+}
+
+/// The same of drivers that refuse what they hear, since they are latched or have just started: they send feedback by
+/// themselves and no more often than that.
+fn heard_unanswered_s(plan: &Plan) -> f64 {
+    let period_s = plan.tick.period_s();
+    heard_s(plan) - period_s + period_s.max(FEEDBACK_EVERY_US as f64 * 1e-6)
 }
 
 /// The drivers' delay, configured or assumed.

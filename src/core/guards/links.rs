@@ -83,8 +83,13 @@ fn reported(index: u8, link: &Link, news: &News, input: &LinkInput, watch: Watch
     if bits & status::STOP_INPUT_OPEN != 0 {
         return Some(Cause::StopAsked(StopBy::DriverInput { link: index }));
     }
-    if bits & status::LATCHED == 0 || watch == Watch::Clearing {
+    if watch == Watch::Clearing {
         return None;
+    }
+    // Torque that we never asked for: somebody before us did, and the wheels may be turning.
+    if bits & status::LATCHED == 0 {
+        let torque = !news.continues && bits & status::TORQUE_ON != 0;
+        return torque.then_some(Cause::FoundLatched { link: index, status: bits });
     }
     // What was latched when it was first heard did that before our time.
     Some(if news.continues {

@@ -23,6 +23,12 @@ impl DriverStop {
         Self { began, ramp_ms, from_rad_s, told: false }
     }
 
+    /// A stop of wheels that somebody before us has told to turn: how fast they were is not known, so nothing can be
+    /// held against them.
+    pub(in super::super) fn of_others(began: Mono, ramp_ms: u16) -> Self {
+        Self { told: true, ..Self::new(began, ramp_ms, PerWheel::new()) }
+    }
+
     /// The ramp's time is over, and with it the torque.
     pub(super) fn is_over(&self, look: &Look<'_>) -> bool {
         look.now.since_ns(self.began) > self.ramp_ns() + look.settings.times.driver_ns

@@ -4,6 +4,7 @@ use super::super::Cause;
 use super::super::cause::{DriverTrouble, StopBy};
 use super::{bits, greatest_rad_s, link, port, wheel};
 use crate::config::Plan;
+use crate::wire::status;
 
 /// Why the base was stopped, with the values that decided it.
 #[must_use]
@@ -60,7 +61,8 @@ pub fn cause(cause: &Cause, plan: &Plan) -> String {
         Cause::SecondSignal => "a second signal before the end".into(),
         Cause::Panic => "a part of the program failed".into(),
         Cause::FoundLatched { link: it, status } => {
-            format!("{} was found latched ({})", link(plan, *it), bits(*status))
+            let how = if *status & status::LATCHED == 0 { "with torque on" } else { "latched" };
+            format!("{} was found {how} ({})", link(plan, *it), bits(*status))
         }
         Cause::NotCleared { link: it } => {
             format!("{} did not unlatch within 0.5 s of the reset", link(plan, *it))
