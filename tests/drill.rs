@@ -170,7 +170,8 @@ fn what_cannot_be_drilled_is_said_in_one_line() {
     for (arguments, told) in [
         (&["--standin", "--only", "flood"][..], "--only flood: there is no such fault"),
         (&["--standin", "--pace", "gallop"], "--pace gallop: no such pace; there are creep"),
-        (&["--pace", "walk"], "pace 'walk' is not the slowest"),
+        (&["--pace", "walk", "--hands", "x.csv"], "pace 'walk' is not the slowest"),
+        (&[], "a base is drilled with somebody at the terminal"),
         (&["--standin", "--html", "no/page.html"], "cannot write no/page.html"),
         (&["--standin", "--hands", "x.csv"], "cannot be used with"),
     ] {

@@ -2,6 +2,7 @@
 #![expect(clippy::unwrap_used, reason = "a test says what went wrong by stopping")]
 
 use arrayvec::ArrayString;
+use gripline::wire::driver::{Driver, Measured};
 use gripline::wire::{
     ChannelState, Deframer, Drive, Feedback, FromDrivers, Identity, MAX_CHANNELS, MAX_ON_LINE, Mode,
     PerChannel, ToDrivers, WireError, emit_from_drivers, emit_to_drivers, parse_from_drivers,
@@ -295,4 +296,91 @@ fn motion_outside_run_is_no_frame() {
             other => panic!("taken: {other:?}"),
         }
     }
+}
+
+/// Two channels, just started.
+fn two_channels() -> Driver {
+    let identity = Identity {
+        version: 1,
+        flags: 0,
+        channels: 2,
+        speed_lsb_urad_s: 1000,
+        angle_lsb_urad: 1000,
+        silence_ms: 1000,
+        ramp_max_ms: 1000,
+        boot: 1,
+        name: ArrayString::new(),
+    };
+    Driver::new(identity, 0)
+}
+
+fn tell(driver: &mut Driver, message: &ToDrivers, now_us: u64) {
+    let mut bytes = [0; MAX_ON_LINE];
+    let length = emit_to_drivers(7, message, &mut bytes);
+    bytes[..length].iter().for_each(|it| driver.receive(*it, now_us));
+}
+
+fn drive(mode: Mode) -> ToDrivers {
+    let speed = if mode == Mode::Run { 100 } else { 0 };
+    ToDrivers::Drive(Drive {
+        mode,
+        valid_ms: 500,
+        ramp_ms: 100,
+        speeds: [speed, speed].into_iter().collect(),
+    })
+}
+
+/// Only Clear ends a latch: a Park, a Hold and a Run are refused, and nothing is told to turn.
+#[test]
+fn a_latched_driver_takes_no_drive_of_any_mode() {
+    let mut driver = two_channels();
+    for mode in [Mode::Park, Mode::Hold, Mode::Run] {
+        tell(&mut driver, &drive(mode), 1000);
+    }
+    assert_eq!(driver.command(1000).speeds[0], 100);
+    tell(&mut driver, &ToDrivers::Stop { ramp_ms: 10 }, 2000);
+    for (now_us, mode) in (20_000..).step_by(1000).zip([Mode::Park, Mode::Hold, Mode::Run, Mode::Run]) {
+        tell(&mut driver, &drive(mode), now_us);
+        assert!(driver.latched(), "{mode:?}");
+        assert_eq!(driver.command(now_us).speeds[0], 0);
+    }
+}
+
+#[test]
+fn only_the_present_token_clears_and_only_after_the_ramp() {
+    let mut driver = two_channels();
+    for mode in [Mode::Park, Mode::Hold, Mode::Run] {
+        tell(&mut driver, &drive(mode), 1000);
+    }
+    tell(&mut driver, &ToDrivers::Stop { ramp_ms: 10 }, 2000);
+    let mut bytes = [0; MAX_ON_LINE];
+    let length = driver.transmit(3000, &Measured::default(), &mut bytes);
+    let plain = deframed(&bytes[..length]).remove(0).unwrap();
+    let Ok((_, FromDrivers::Feedback(feedback))) = parse_from_drivers(&plain) else {
+        unreachable!("feedback is owed")
+    };
+    let token = feedback.token;
+    tell(&mut driver, &ToDrivers::Clear { token }, 11_999);
+    assert!(driver.latched(), "the ramp is not over");
+    for wrong in (0..=u16::MAX).filter(|it| *it != token) {
+        tell(&mut driver, &ToDrivers::Clear { token: wrong }, 12_000);
+        assert!(driver.latched(), "{wrong} is not {token}");
+    }
+    tell(&mut driver, &ToDrivers::Clear { token }, 12_000);
+    assert!(!driver.latched());
+}
+
+/// Each step is taken only from the one before it.
+#[test]
+fn nothing_turns_without_a_park_and_a_hold_before() {
+    let mut driver = two_channels();
+    for mode in [Mode::Run, Mode::Hold, Mode::Run, Mode::Park, Mode::Run] {
+        tell(&mut driver, &drive(mode), 1000);
+        assert_eq!((driver.command(1000).torque, driver.command(1000).speeds[0]), (false, 0), "{mode:?}");
+    }
+    for mode in [Mode::Hold, Mode::Run] {
+        tell(&mut driver, &drive(mode), 1000);
+        assert!(driver.command(1000).torque);
+    }
+    assert_eq!(driver.command(1000).speeds[0], 100);
 }

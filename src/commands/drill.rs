@@ -6,7 +6,7 @@ use std::path::PathBuf;
 use gripline::drill::{self, Answer, DrillError, FAULTS, Fault, OnBase, People, Report, Row, Setup};
 use gripline::{config, daemon};
 
-use super::{Exit, fail, print, warn};
+use super::{Exit, fail, print};
 
 /// Provoke faults one after the other, measure time and distance to standstill, and hold them against the stop budget.
 ///
@@ -57,6 +57,12 @@ pub(crate) fn run(args: Args) -> Exit {
         Ok(faults) => faults,
         Err(why) => return fail(Exit::CouldNotRun, why),
     };
+    if !args.standin && args.hands.is_none() && !std::io::stdin().is_terminal() {
+        return fail(
+            Exit::CouldNotRun,
+            "a base is drilled with somebody at the terminal, and standard input is none; run it there, or with --standin",
+        );
+    }
     let mut setup = match set_up(&args) {
         Ok(setup) => setup,
         Err(exit) => return exit,
@@ -198,10 +204,6 @@ impl People for Terminal {
             return Answer::Go;
         }
         self.tell("Enter goes on, s leaves it out, q ends the drill");
-        if !std::io::stdin().is_terminal() {
-            warn("nobody can answer: standard input is no terminal");
-            return Answer::End;
-        }
         let mut line = String::new();
         match std::io::stdin().lock().read_line(&mut line) {
             Ok(0) | Err(_) => Answer::End,

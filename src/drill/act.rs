@@ -156,13 +156,16 @@ fn second_drive(target: &Target<'_>) -> Result<(), Refused> {
 }
 
 /// Clients that send whatever they can and read nothing; ended when dropped.
-pub(super) struct Flood {
+#[derive(Debug)]
+pub struct Flood {
     stop: Arc<AtomicBool>,
     threads: Vec<JoinHandle<()>>,
 }
 
 impl Flood {
-    fn start(socket: &Path) -> Self {
+    /// Sixteen of them, as many as the console lets in.
+    #[must_use]
+    pub fn start(socket: &Path) -> Self {
         let stop = Arc::new(AtomicBool::new(false));
         let threads = (0..FLOODERS).filter_map(|index| {
             let (stop, socket) = (Arc::clone(&stop), socket.to_owned());

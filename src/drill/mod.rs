@@ -14,6 +14,7 @@ mod script;
 mod seen;
 mod setup;
 
+pub use act::Flood;
 pub use fault::{FAULTS, Fault, Must, Real};
 pub use one::on_standin;
 pub use page::page;

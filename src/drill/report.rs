@@ -86,6 +86,7 @@ impl Report {
         }
         text += match (&self.too_late, self.ok()) {
             (Some(why), _) => return text + &format!("this machine was too late to judge by: {why}\n"),
+            (None, true) if self.drills.iter().all(|it| it.ok.is_none()) => "nothing was judged\n",
             (None, true) => "every fault that was tried did what it must\n",
             (None, false) => "something MISSED what it must do\n",
         };

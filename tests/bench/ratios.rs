@@ -2,6 +2,8 @@
 //! machine and the next are not alike. The floors are what the same machine does at least for such a job.
 #![expect(clippy::unwrap_used, reason = "a benchmark says what went wrong by stopping")]
 
+mod running;
+
 use std::hint::black_box;
 use std::os::fd::AsFd;
 
@@ -232,8 +234,33 @@ fn stop_line() {
     );
 }
 
-/// How late ticks wake at 1 kHz, against the same sleep without anything round it.
-fn wake() {
+/// How late the ticks of a running drive wake, against a bare sleep at the same priority, and with its console flooded.
+fn running_drive(floor: (f64, f64)) {
+    let Some(late) = running::measure() else {
+        println!("a running drive: not measured, it did not start");
+        return;
+    };
+    for (what, index, floor) in [("median", 0, floor.0), ("p99.9", 1, floor.1)] {
+        let (alone, flooded) = (late.alone_us[index], late.flooded_us[index]);
+        row(
+            &format!("tick of a drive at 1 kHz, {what}"),
+            &format!("{alone:.1} us"),
+            &format!("bare sleep {floor:.1} us"),
+            alone / floor,
+            "1.2",
+        );
+        row(
+            &format!("the same, console flooded, {what}"),
+            &format!("{flooded:.1} us"),
+            &format!("not flooded {alone:.1} us"),
+            flooded / alone,
+            "1 (not noticed)",
+        );
+    }
+}
+
+/// How late ticks wake at 1 kHz, against the same sleep without anything round it; gives the floor.
+fn wake() -> (f64, f64) {
     let late = |work: &mut dyn FnMut()| {
         let period_ns = 1_000_000;
         let mut due = clock::now().plus_ns(period_ns);
@@ -274,6 +301,7 @@ fn wake() {
         ours.1 / floor.1,
         "1.2",
     );
+    floor
 }
 
 /// Resident memory of a running drive, and how long it takes to its first frame on the line.
@@ -326,6 +354,7 @@ fn main() {
     frames();
     stop_line();
     process();
-    wake();
+    let floor = wake();
+    running_drive(floor);
     println!("allocations in tick, link, record and stop path: 0, by test (tests/no_alloc*.rs)");
 }

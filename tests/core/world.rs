@@ -494,6 +494,10 @@ pub(crate) fn promises(plan: &Plan, out: &Outputs) {
     }
     assert_eq!(out.cause.is_some(), out.phase == Phase::Tripped);
     assert!(!out.pull_stop || out.phase == Phase::Tripped);
+    assert!(
+        out.release_stop_line.is_none() || out.phase != Phase::Tripped,
+        "the stop line rests while tripped"
+    );
     assert!(motion || out.view.sent_rad_s.iter().all(|it| *it == 0.0));
     assert_eq!(out.stop_sequence.len(), plan.links.len());
     let half_counts = plan.layout.wheel_speeds(out.view.sent);

@@ -134,6 +134,7 @@ fn frames(plan: &Plan, out: &Outputs) -> Result<(), String> {
     }
     law!(out.cause.is_some() == (out.phase == Phase::Tripped), "{:?} in {:?}", out.cause, out.phase);
     law!(!out.pull_stop || out.phase == Phase::Tripped, "the stop line is pulled in {:?}", out.phase);
+    law!(out.release_stop_line.is_none() || out.phase != Phase::Tripped, "the stop line rests in Tripped");
     law!(out.stop_sequence.len() == plan.links.len() && out.events.len() <= 16, "no stop for a link");
     Ok(())
 }

@@ -214,7 +214,12 @@ impl Drive<'_> {
         let valid_s = self.budget.row(Guard::HostSilent, 0).detect_s + self.late_s();
         if self.killed.is_some_and(|it| self.now.since_s(it) < valid_s) {
             let last = plan.paces.len() - 1;
-            let stop = self.settled(self.budget.allowed(Guard::DriverSays, last));
+            let mut stop = self.settled(self.budget.allowed(Guard::DriverSays, last));
+            if self.faults.len() > 1 {
+                // Its stop may get through only just before the drivers would have missed it.
+                let silent = self.budget.allowed(Guard::HostSilent, last).later(self.late_s(), 0.0);
+                stop = stop.slower(self.settled(silent));
+            }
             self.slowest = self.slowest.slower(stop);
             self.standing.put_off(self.now, stop);
         }

@@ -1,5 +1,6 @@
-//! The drivers' side of the line, twice: ours, and one in Python that shares no code with it, written from the design's
-//! page alone. Both are given the same random histories and must say the same bytes.
+//! The drivers' side of the line, three times: ours, the one in C that is there for firmware, and one in Python that
+//! shares no code with either, written from the design's page alone. All are given the same random histories and must say
+//! the same bytes.
 
 #![expect(clippy::unwrap_used, clippy::panic, reason = "a test may end where it fails")]
 
@@ -42,6 +43,51 @@ fn ours_and_a_stranger_say_the_same_for_the_same_history() {
     assert_eq!(kinds_seen, 0x07ff);
 }
 
+/// The one in C says and commands the same to the bit, under the sanitizers for addresses and undefined behaviour.
+#[test]
+fn the_one_in_c_says_and_commands_the_same() {
+    let dir = tempfile::tempdir().unwrap();
+    let program = dir.path().join("replay");
+    compile(
+        &["tests/agree/replay.c"],
+        &["-fsanitize=address,undefined", "-fno-sanitize-recover=all", "-g"],
+        &program,
+    );
+    for seed in 1..=40 {
+        let history = History::make(seed);
+        let mut child = Command::new(&program).stdin(Stdio::piped()).stdout(Stdio::piped()).spawn().unwrap();
+        let mut input = child.stdin.take().unwrap();
+        let lines = history.plain.join("\n");
+        let writer = std::thread::spawn(move || writeln!(input, "{lines}").unwrap());
+        let output = child.wait_with_output().unwrap();
+        writer.join().unwrap();
+        assert!(output.status.success(), "seed {seed}: {}", String::from_utf8_lossy(&output.stderr));
+        let said = String::from_utf8(output.stdout).unwrap();
+        assert_eq!(said.lines().count(), STEPS, "seed {seed}");
+        for (step, (ours, theirs)) in history.ours.iter().zip(said.lines()).enumerate() {
+            let speeds: Vec<String> = ours.commanded.iter().map(ToString::to_string).collect();
+            let said = if ours.said.is_empty() { "-" } else { &ours.said };
+            let ours = format!("{said} {} {}", u8::from(ours.torque), speeds.join(" "));
+            assert_eq!(ours, theirs, "seed {seed}, step {step}: {}", history.plain[step]);
+        }
+    }
+}
+
+/// As for somebody's firmware: every warning is an error.
+fn compile(sources: &[&str], options: &[&str], program: &std::path::Path) {
+    let root = env!("CARGO_MANIFEST_DIR");
+    let out = Command::new("gcc")
+        .current_dir(root)
+        .args(["-std=c99", "-Wall", "-Wextra", "-Werror", "-pedantic", "-Wconversion", "-Isrc/wire/c"])
+        .args(options)
+        .args(sources)
+        .args(["src/wire/c/gripline.c", "-o"])
+        .arg(program)
+        .output()
+        .unwrap_or_else(|why| panic!("gcc is needed for this test: {why}"));
+    assert!(out.status.success(), "{}", String::from_utf8_lossy(&out.stderr));
+}
+
 /// What ours did in one step.
 struct Ours {
     said: String,
@@ -52,6 +98,8 @@ struct Ours {
 /// A random history, as lines for the stranger, and what ours made of it.
 struct History {
     lines: Vec<String>,
+    /// The same without names, for the one in C.
+    plain: Vec<String>,
     ours: Vec<Ours>,
     tokens: Vec<u16>,
     status_seen: u16,
@@ -66,7 +114,8 @@ impl History {
             supply_mv: 24_000,
             ..Measured::default()
         };
-        let mut history = Self { lines: vec![], ours: vec![], tokens: vec![token(&driver)], status_seen: 0 };
+        let mut history =
+            Self { lines: vec![], plain: vec![], ours: vec![], tokens: vec![token(&driver)], status_seen: 0 };
         let (mut now_us, mut token_said, mut sequence) = (0_u64, 0, 0_u8);
         for _ in 0..STEPS {
             now_us += random.below(15_000);
@@ -86,6 +135,7 @@ impl History {
             sequence = sequence.wrapping_add(1);
             let heard = random.bytes(sequence, token_said);
             history.lines.push(line(now_us, &measured, &heard));
+            history.plain.push(plain_line(now_us, &measured, &heard));
 
             let mut said = Vec::new();
             driver.advance(now_us, &measured);
@@ -176,6 +226,19 @@ fn line(now_us: u64, measured: &Measured, heard: &[u8]) -> String {
         "hex": hex(heard),
     })
     .to_string()
+}
+
+fn plain_line(now_us: u64, measured: &Measured, heard: &[u8]) -> String {
+    let channels: String = measured.channels.iter().map(|it| format!(" {} {}", it.angle, it.speed)).collect();
+    let heard = if heard.is_empty() { "-".to_owned() } else { hex(heard) };
+    format!(
+        "{now_us} {} {} {} {} {}{channels} {heard}",
+        u8::from(measured.stop_input_open),
+        u8::from(measured.yaw_rate.is_some()),
+        measured.yaw_rate.unwrap_or(0),
+        measured.supply_mv,
+        measured.bits
+    )
 }
 
 fn transmit(driver: &mut Driver, now_us: u64, measured: &Measured, said: &mut Vec<u8>) {
