@@ -54,7 +54,6 @@ MUTANTS = [
     ("reset and ready off-centre", "src/core/reset.rs", "(!seen.centred).then_some(Wait::SticksNotCentred)", "None"),
     ("the console resets a stop of the pad", "src/core/reset.rs", "inputs.console.reset && !self.state.reset_at_pad;", "inputs.console.reset;"),
     ("a ready button that is down counts", "src/core/operator.rs", "if !inputs.pad.present || !inputs.pad.pressed.has(Buttons::READY) {", "if !inputs.pad.present || !inputs.pad.down.has(Buttons::READY) {"),
-    ("a hold that is down counts as a press", "src/core/operator.rs", "        if !seen.hold.edge {\n            self.state.hold.arm(seen.hold);", "        if !seen.hold.pressed {\n            self.state.hold.arm(seen.hold);"),
     ("a press counts that was not released in Ready", "src/core/operator.rs", "let wait = if !counts {", "let wait = if counts && !counts {"),
     ("a hold that is down drives when Ready comes", "src/core/operator.rs", "        if !seen.hold.edge {\n            self.state.hold.arm(seen.hold);\n            return;\n        }\n        // Whatever becomes of it, this press is spent.\n        let counts = self.state.hold.spend();", "        if !seen.hold.pressed {\n            return;\n        }\n        let counts = true;"),
     ("an off-centre press counts", "src/core/operator.rs", "} else if !seen.centred {", "} else if seen.centred && !seen.centred {"),
