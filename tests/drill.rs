@@ -187,3 +187,42 @@ fn what_cannot_be_drilled_is_said_in_one_line() {
         assert!(said.contains(told) && said.lines().count() == 1, "{arguments:?}: {said}");
     }
 }
+
+/// The drivers' side in C, compiled as firmware is, at the other end of a pseudo-terminal: driven, stopped, killed,
+/// suspended, and held against the same budget.
+#[test]
+fn the_drivers_in_c_bear_the_drill() {
+    let dir = tempfile::tempdir().unwrap();
+    config(dir.path());
+    let compiled = Command::new("gcc")
+        .current_dir(env!("CARGO_MANIFEST_DIR"))
+        .args(["-std=c99", "-D_XOPEN_SOURCE=600", "-Wall", "-Wextra", "-Werror", "-pedantic", "-O2", "-o"])
+        .arg(dir.path().join("host"))
+        .args(["src/wire/c/host.c", "src/wire/c/gripline.c"])
+        .output()
+        .unwrap_or_else(|why| panic!("gcc is needed for this test: {why}"));
+    assert!(compiled.status.success(), "{}", String::from_utf8_lossy(&compiled.stderr));
+    let mut host = Command::new(dir.path().join("host"))
+        .args(["--pty", "cart", "tray cart drivers", "4", "1000", "500"])
+        .current_dir(dir.path())
+        .stdin(Stdio::piped())
+        .spawn()
+        .unwrap();
+    while !dir.path().join("cart").exists() {
+        assert!(host.try_wait().unwrap().is_none(), "the drivers in C ended");
+        gripline::sys::clock::sleep_ms(5);
+    }
+    // After a fault that latches them they are cleared by whoever drives next.
+    let hands = "0.5,Select,1\n1.9,Select,0\n2.1,Start,1\n2.2,Start,0\n2.4,RightTrigger2,1\n2.6,LeftStickY,1\n14.0,LeftStickY,0\n";
+    std::fs::write(dir.path().join("hands.csv"), hands).unwrap();
+    let mut with = vec!["--port", "cart", "--hands", "hands.csv"];
+    with.extend(["console-stop", "killed", "suspended", "terminated"].iter().flat_map(|it| ["--only", it]));
+    let (exit, report, said) = drill(dir.path(), &with);
+    let rows = report["drills"].as_array().unwrap();
+    assert_eq!(rows.len(), 4, "{said}");
+    rows.iter().for_each(holds);
+    assert!(exit == Some(0) || !report["too_late"].is_null(), "{said}");
+    assert!(rows.iter().any(|it| it["ok"] == true), "{report:#}");
+    drop(host.stdin.take());
+    assert!(host.wait().unwrap().success());
+}

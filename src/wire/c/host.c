@@ -2,10 +2,11 @@
  * logic against the program before there is hardware.
  *
  *   cc -std=c99 -D_XOPEN_SOURCE=600 -O2 -o host host.c gripline.c
- *   ./host --pty LINK NAME CHANNELS      opens a pseudo-terminal and links it at LINK
- *   ./host TTY NAME CHANNELS             speaks on a port that is there
+ *   ./host --pty LINK NAME CHANNELS SPEED_LSB ANGLE_LSB     opens a pseudo-terminal and links it at LINK
+ *   ./host TTY NAME CHANNELS SPEED_LSB ANGLE_LSB            speaks on a port that is there
  *
- * Wheels follow by a lag of 20 ms; counts are 2000 urad/s and 500 urad. It ends when its standard input is closed. */
+ * The counts are micro-radians a second and micro-radians, as in the configuration. Wheels follow by a lag of 20 ms. It
+ * ends when its standard input is closed. */
 #include "gripline.h"
 
 #include <errno.h>
@@ -61,8 +62,8 @@ static int open_pty(const char *link)
 int main(int argc, char **argv)
 {
     int pty = argc > 1 && strcmp(argv[1], "--pty") == 0;
-    if (argc != 4 + pty) {
-        fprintf(stderr, "usage: host TTY|--pty LINK NAME CHANNELS\n");
+    if (argc != 6 + pty) {
+        fprintf(stderr, "usage: host TTY|--pty LINK NAME CHANNELS SPEED_LSB ANGLE_LSB\n");
         return 2;
     }
     const char *path = argv[1 + pty];
@@ -71,8 +72,15 @@ int main(int argc, char **argv)
         fprintf(stderr, "host: cannot use %s: %s\n", path, strerror(errno));
         return 3;
     }
-    gripline_identity identity = {GRIPLINE_SIMULATED | GRIPLINE_HAS_STOP_INPUT, 0, 2000, 500, 1000, 10000, 0, ""};
+    gripline_identity identity = {GRIPLINE_SIMULATED | GRIPLINE_HAS_STOP_INPUT, 0, 0, 0, 1000, 10000, 0, ""};
     identity.channels = (uint8_t)atoi(argv[3 + pty]);
+    identity.speed_lsb_urad_s = (uint32_t)atol(argv[4 + pty]);
+    identity.angle_lsb_urad = (uint32_t)atol(argv[5 + pty]);
+    if (identity.channels < 1 || identity.channels > GRIPLINE_MAX_CHANNELS || identity.speed_lsb_urad_s == 0 ||
+        identity.angle_lsb_urad == 0) {
+        fprintf(stderr, "host: 1 to %d channels, and counts above zero\n", GRIPLINE_MAX_CHANNELS);
+        return 2;
+    }
     identity.boot = (uint16_t)(now_us() ^ (uint64_t)getpid() << 4);
     strncpy(identity.name, argv[2 + pty], GRIPLINE_MAX_NAME);
     static gripline_driver driver;
@@ -105,7 +113,7 @@ int main(int argc, char **argv)
         for (unsigned i = 0; i < identity.channels; i++) {
             double share = dt / (command.torque ? 0.02 : 0.2);
             speed[i] += (command.speed[i] - speed[i]) * (share < 1 ? share : 1);
-            angle[i] += speed[i] * dt * 2000.0 / 500.0;
+            angle[i] += speed[i] * dt * identity.speed_lsb_urad_s / identity.angle_lsb_urad;
             measured.speed[i] = (int16_t)(speed[i] < 0 ? speed[i] - 0.5 : speed[i] + 0.5);
             measured.angle[i] = (int32_t)(uint32_t)(int64_t)angle[i];
         }
