@@ -8,21 +8,40 @@
 //! `link` / `record`, `standin`, `core`, `config`, `shaping`, `base`, `wire`, `units`; `sys` holds the system calls that have
 //! no safe wrapper and may be used by the shell alone.
 
+#![cfg_attr(not(feature = "std"), no_std)]
+
+#[cfg(feature = "std")]
 pub mod base;
+#[cfg(feature = "std")]
 pub mod check;
+#[cfg(feature = "std")]
 pub mod config;
+#[cfg(feature = "std")]
 pub mod core;
+#[cfg(feature = "std")]
 pub mod daemon;
+#[cfg(feature = "std")]
 pub mod drill;
+#[cfg(feature = "std")]
 pub mod link;
+#[cfg(feature = "std")]
 pub mod measure;
+#[cfg(feature = "std")]
 pub mod pad;
+#[cfg(feature = "std")]
 pub mod page;
+#[cfg(feature = "std")]
 pub mod record;
+#[cfg(feature = "std")]
 pub mod rehearse;
+#[cfg(feature = "std")]
 pub mod review;
+#[cfg(feature = "std")]
 pub mod shaping;
+#[cfg(feature = "std")]
 pub mod standin;
+#[cfg(feature = "std")]
 pub mod sys;
+#[cfg(feature = "std")]
 pub mod units;
 pub mod wire;

@@ -80,7 +80,7 @@ pub fn on_base(
     let config = folder.write("base.toml", &text)?;
     let mut driving = Driving::start(&setup.program, &config, &folder, &setup.record_dir, &with.arguments)?;
     people.tell(&format!(
-        "ready, hold, and drive straight ahead at pace '{}' with a full stick; keep it there",
+        "reset what is tripped, then ready, hold, and drive straight ahead at pace '{}' with a full stick; keep it there",
         setup.pace_name()
     ));
     if !until_at_pace(setup, &folder, &mut driving, people)? {
