@@ -23,6 +23,26 @@ struct Heard {
     since_round: bool,
     boot: Option<u16>,
     angles: Vec<i32>,
+    /// The driver's clock: as last told, and what has passed on it since the first feedback, microseconds.
+    clock: (u32, u64),
+    /// What the host's clock shows at the driver's first feedback: the least that any feedback makes of it, nanoseconds.
+    /// Feedback that waited somewhere (a suspended program reads it late) is so put where it belongs.
+    began_ns: u64,
+}
+
+impl Heard {
+    /// When this feedback was sent, on the host's clock.
+    fn sent_at(&mut self, heard_at: Mono, feedback: &Feedback) -> Mono {
+        if self.boot != Some(feedback.boot) {
+            self.clock = (feedback.clock_us, 0);
+            self.began_ns = heard_at.ns();
+        }
+        let (before, passed_us) = self.clock;
+        let passed_us = passed_us + u64::from(feedback.clock_us.wrapping_sub(before));
+        self.clock = (feedback.clock_us, passed_us);
+        self.began_ns = self.began_ns.min(heard_at.ns().saturating_sub(passed_us.saturating_mul(1000)));
+        Mono::from_ns(self.began_ns).plus_ns(passed_us.saturating_mul(1000))
+    }
 }
 
 /// Every link has been heard once more.
@@ -62,8 +82,9 @@ impl<'a> Follower<'a> {
     }
 
     /// Takes a feedback; gives the round that it completes.
-    pub(super) fn hear(&mut self, at: Mono, link: usize, feedback: &Feedback) -> Option<Round> {
+    pub(super) fn hear(&mut self, heard_at: Mono, link: usize, feedback: &Feedback) -> Option<Round> {
         let heard = self.links.get_mut(link)?;
+        let at = heard.sent_at(heard_at, feedback);
         let goes_on = heard.boot == Some(feedback.boot);
         let wheels = self.plan.wheels.iter().zip(self.turned_rad.iter_mut().zip(&mut self.speed_rad_s));
         for (wheel, (turned, speed)) in wheels.filter(|(wheel, _)| wheel.link == link) {

@@ -25,7 +25,7 @@ const EVEN_S: f64 = 0.6;
 /// The script for one fault; `watch_s` is how long the controls are kept where they are after it.
 pub(super) fn script(plan: &Plan, pace: usize, fault: &Fault, watch_s: f64) -> Script {
     let pad = &plan.pad;
-    let mut hands = Hands { text: String::new(), at_s: 0.7 };
+    let mut hands = Hands { text: String::new(), at_s: 1.2 };
     hands.click(pad.ready);
     for _ in 0..pace {
         hands.click(pad.pace_up);

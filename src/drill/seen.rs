@@ -132,6 +132,7 @@ impl<'a> Watch<'a> {
     /// A feedback from the drivers.
     pub(super) fn hear(&mut self, at: Mono, link: usize, feedback: &Feedback) {
         let Some(round) = self.follower.hear(at, link, feedback) else { return };
+        let at = round.at;
         let Some(struck) = self.seen.struck else { return };
         let t_s = if at < struck { -struck.since_s(at) } else { at.since_s(struck) };
         if at.plus_ns(BEFORE_NS) > struck {
